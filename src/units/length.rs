@@ -44,10 +44,8 @@ impl Length {
             .find(|c: char| c.is_alphabetic() && c != 'e' && c != 'E' || c.is_whitespace())
             .unwrap_or(text.len());
         let (number, unit) = text.split_at(split);
-        let value: f64 = number
-            .trim()
-            .parse()
-            .map_err(|_| format!("`{text}` is no length: {}", Self::EXPECTED))?;
+        let value: f64 =
+            number.trim().parse().map_err(|_| format!("`{text}` is no length: {}", Self::EXPECTED))?;
         if !value.is_finite() || value < 0.0 {
             return Err(format!("`{text}` is no length: it must be finite and not negative"));
         }
@@ -107,11 +105,7 @@ fn trim(value: f64) -> String {
     }
     let digits = (3.0 - value.abs().log10().floor()).clamp(0.0, 9.0) as usize;
     let text = format!("{value:.digits$}");
-    if text.contains('.') {
-        text.trim_end_matches('0').trim_end_matches('.').into()
-    } else {
-        text
-    }
+    if text.contains('.') { text.trim_end_matches('0').trim_end_matches('.').into() } else { text }
 }
 
 #[cfg(test)]

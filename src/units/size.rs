@@ -29,19 +29,14 @@ impl Bytes {
                 let number: f64 = text.strip_suffix(unit)?.trim().parse().ok()?;
                 (number.is_finite() && number > 0.0).then(|| Self((number * *factor as f64) as u64))
             })
-            .ok_or_else(|| {
-                format!("`{text}` is no size: write a number with a unit, such as \"4 GiB\"")
-            })
+            .ok_or_else(|| format!("`{text}` is no size: write a number with a unit, such as \"4 GiB\""))
     }
 }
 
 impl fmt::Display for Bytes {
     fn fmt(&self, f: &mut fmt::Formatter<'_>) -> fmt::Result {
-        let (unit, factor) = UNITS[..3]
-            .iter()
-            .find(|(_, factor)| self.0 >= *factor)
-            .copied()
-            .unwrap_or(("B", 1));
+        let (unit, factor) =
+            UNITS[..3].iter().find(|(_, factor)| self.0 >= *factor).copied().unwrap_or(("B", 1));
         write!(f, "{:.1} {unit}", self.0 as f64 / factor as f64)
     }
 }

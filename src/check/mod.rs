@@ -1,0 +1,3 @@
+//! TODO
+mod settings;
+pub use settings::*;

@@ -1,0 +1,3 @@
+//! Reads plans.
+mod study;
+pub use study::*;

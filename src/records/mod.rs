@@ -1,0 +1,5 @@
+//! TODO
+mod dates;
+mod settings;
+pub use dates::*;
+pub use settings::*;
