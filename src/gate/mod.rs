@@ -1,1 +1,25 @@
-//! TODO
+//! How bytes come and go: rasters, vectors and tables onto the study's grid; outputs onto disk.
+//!
+//! The only room that knows GDAL, files and reference systems. It makes no scientific choice.
+
+mod crs;
+mod digest;
+mod features;
+mod files;
+mod geotiff;
+mod grid_in;
+mod points;
+mod reproject;
+mod scale;
+mod sources;
+mod staging;
+mod table;
+mod values;
+
+pub use crs::transformer_label;
+pub use digest::{InputFile, digest};
+pub use files::Files;
+pub use geotiff::{Band, write as write_geotiff};
+pub use scale::Wander;
+pub use sources::{GridRequest, LayerData, Peek, Sources};
+pub use staging::{Staging, clear_all as clear_staging};

@@ -1,3 +1,13 @@
-//! TODO
+//! Estimators: each takes training records and layers and gives a surface with its evidence.
+//!
+//! Never sees held-out records.
+
+mod access;
+mod density;
+mod fitted;
+mod lattice;
 mod settings;
-pub use settings::*;
+mod terms;
+
+pub use fitted::{Context, Evidence, Fitted, OddsBin, Parameter, fit, observed_to_available};
+pub use settings::{CandidateKind, CandidatePlan, CurveForm, DensityPlan, Fit, TermPlan};

@@ -103,7 +103,7 @@ fn trim(value: f64) -> String {
     if value == 0.0 {
         return "0".into();
     }
-    let digits = (3.0 - value.abs().log10().floor()).clamp(0.0, 9.0) as usize;
+    let digits = (3.0 - libm::log10(value.abs()).floor()).clamp(0.0, 9.0) as usize;
     let text = format!("{value:.digits$}");
     if text.contains('.') { text.trim_end_matches('0').trim_end_matches('.').into() } else { text }
 }

@@ -1,0 +1,128 @@
+//! Outputs appear whole or not at all: written in a hidden folder beside their targets, synced,
+//! then moved into place one after another.
+
+use std::collections::BTreeSet;
+use std::fs::{self, File};
+use std::path::{Path, PathBuf};
+use std::sync::Mutex;
+
+use crate::diag::{Diagnostic, Outcome};
+
+/// Prefix of the hidden folders.
+const PREFIX: &str = ".trodden-";
+
+/// Folders to clear when the run is interrupted. Held while files are moved into place, so that an
+/// interruption waits for the move to end.
+static OPEN: Mutex<BTreeSet<PathBuf>> = Mutex::new(BTreeSet::new());
+
+/// Removes every unfinished output; called when the run is interrupted.
+pub fn clear_all() {
+    let open = OPEN.lock().unwrap_or_else(std::sync::PoisonError::into_inner);
+    open.iter().for_each(|folder| drop(fs::remove_dir_all(folder)));
+}
+
+/// Outputs on their way into a folder.
+pub struct Staging {
+    target: PathBuf,
+    hidden: PathBuf,
+    made: Vec<PathBuf>,
+    names: Vec<String>,
+}
+
+impl Staging {
+    /// Opens a hidden folder inside the target, which is made when it does not exist. What an
+    /// earlier, killed run left there is cleared.
+    ///
+    /// # Errors
+    /// When the folder cannot be made or written to.
+    pub fn open(target: &Path) -> Outcome<Self> {
+        let refused = |e: std::io::Error| {
+            Diagnostic::output("folder_not_writable", target.display().to_string(), format!("cannot write there: {e}"))
+                .cure("give another folder with `-o`, or change its permissions")
+        };
+        let made: Vec<PathBuf> =
+            target.ancestors().take_while(|a| !a.as_os_str().is_empty() && !a.exists()).map(Path::to_owned).collect();
+        fs::create_dir_all(target).map_err(refused)?;
+        clear_stale(target);
+        let hidden = target.join(format!("{PREFIX}{}", std::process::id()));
+        fs::create_dir_all(&hidden).map_err(refused)?;
+        OPEN.lock().unwrap_or_else(std::sync::PoisonError::into_inner).insert(hidden.clone());
+        Ok(Self { target: target.to_owned(), hidden, made, names: Vec::new() })
+    }
+
+    /// Where to write an output of this name for now.
+    pub fn path(&mut self, name: &str) -> PathBuf {
+        if !self.names.iter().any(|n| n == name) {
+            self.names.push(name.to_owned());
+        }
+        self.hidden.join(name)
+    }
+
+    /// Writes an output.
+    ///
+    /// # Errors
+    /// When the disk does not take it.
+    pub fn write(&mut self, name: &str, bytes: &[u8]) -> Outcome<()> {
+        let path = self.path(name);
+        fs::write(path, bytes).map_err(|e| self.failed(name, &e).into())
+    }
+
+    /// Names of the outputs, in the order of writing.
+    pub fn names(&self) -> &[String] {
+        &self.names
+    }
+
+    /// Syncs the outputs and moves them into place.
+    ///
+    /// # Errors
+    /// When the disk does not take them.
+    #[allow(clippy::disallowed_methods, reason = "this is the atomic writer")]
+    pub fn commit(mut self) -> Outcome<Vec<PathBuf>> {
+        for name in &self.names {
+            File::open(self.hidden.join(name)).and_then(|f| f.sync_all()).map_err(|e| self.failed(name, &e))?;
+        }
+        let mut open = OPEN.lock().unwrap_or_else(std::sync::PoisonError::into_inner);
+        let mut placed = Vec::new();
+        for name in &self.names {
+            let to = self.target.join(name);
+            fs::rename(self.hidden.join(name), &to).map_err(|e| self.failed(name, &e))?;
+            placed.push(to);
+        }
+        open.remove(&self.hidden);
+        drop(open);
+        self.made.clear();
+        Ok(placed)
+    }
+
+    fn failed(&self, name: &str, error: &std::io::Error) -> Diagnostic {
+        failed(&self.target.join(name), &error.to_string())
+    }
+}
+
+/// An output that could not be written.
+pub(super) fn failed(path: &Path, why: &str) -> Diagnostic {
+    Diagnostic::output("cannot_write", path.display().to_string(), format!("cannot be written: {why}"))
+        .cure("free some space, or give another folder with `-o`; earlier outputs are as they were")
+}
+
+impl Drop for Staging {
+    fn drop(&mut self) {
+        drop(fs::remove_dir_all(&self.hidden));
+        OPEN.lock().unwrap_or_else(std::sync::PoisonError::into_inner).remove(&self.hidden);
+        // folders made for this run alone go with it; those that hold anything stay
+        self.made.iter().for_each(|folder| drop(fs::remove_dir(folder)));
+    }
+}
+
+/// Removes hidden folders of runs that are no more.
+fn clear_stale(target: &Path) {
+    let Ok(entries) = fs::read_dir(target) else { return };
+    for entry in entries.flatten() {
+        let name = entry.file_name().to_string_lossy().into_owned();
+        let Some(process) = name.strip_prefix(PREFIX) else { continue };
+        let alive = process.parse::<u32>().is_ok_and(|p| p != std::process::id() && Path::new(&format!("/proc/{p}")).exists());
+        if !alive {
+            drop(fs::remove_dir_all(entry.path()));
+        }
+    }
+}

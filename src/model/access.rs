@@ -1,0 +1,479 @@
+//! Effort from layers: an inhomogeneous Poisson process over cells, fitted by maximum likelihood.
+//!
+//! # Formula
+//! Effort per unit of area f = (1 − base)·G/mean(G) + base, G = Π g_k(layer_k); the likelihood of
+//! the units given their number is Σ wᵢ ln f(cellᵢ), means weighted by observed area, so that what
+//! is available enters with its own distances and values. Solved by Levenberg–Marquardt steps on
+//! the outer product of scores, within bounds. Intervals are from block-wise sandwich variances: the
+//! records of one block may depend on each other as they like.
+//!
+//! # Source
+//! Berman, M. & Turner, T. R. (1992), Applied Statistics 41, 31–38; Warton, D. I. & Shepherd, L. C.
+//! (2010), Annals of Applied Statistics 4, 1383–1402; Liang, K.-Y. & Zeger, S. L. (1986), Biometrika
+//! 73, 13–22 (sandwich); Marquardt, D. W. (1963), SIAM Journal 11, 431–441.
+
+use rayon::prelude::*;
+
+use crate::diag::{Diagnostic, Outcome};
+use crate::maths::sum::{par_totals, sum};
+use crate::maths::{float, linear};
+use crate::proxies::ProxyStack;
+use crate::records::{Blocks, Training};
+use crate::units::Share;
+
+use super::fitted::{Context, Fitted, Parameter, normalise};
+use super::settings::{CurveForm, Fit, TermPlan};
+use super::terms::{Free, Term};
+
+/// Most parameters a candidate may have (two per layer and the base).
+const MOST: usize = 33;
+/// Cells of the sample on which the search begins.
+const SAMPLE: usize = 50_000;
+/// Starts of the search: how far the first scales are stretched.
+const STARTS: [f64; 3] = [0.3, 1.0, 3.0];
+/// The search is over when a step promises less than this many nats per unit.
+const TOLERANCE: f64 = 1e-11;
+/// Steps after which a search is given up.
+const MOST_STEPS: usize = 200;
+/// Largest base share searched.
+const MOST_BASE: f64 = 0.999;
+
+/// What the plan asks for.
+pub(super) struct Asked<'a> {
+    pub name: &'a str,
+    pub terms: &'a [TermPlan],
+    pub base: Fit<Share>,
+}
+
+/// Fits the candidate.
+pub(super) fn fit(
+    asked: &Asked,
+    training: &Training,
+    layers: &ProxyStack,
+    context: Context,
+) -> Outcome<Fitted> {
+    let model = Model::new(asked, training, layers)?;
+    let sample: Vec<u32> = {
+        let stride = training.region().len().div_ceil(SAMPLE);
+        (0..training.region().len() as u32)
+            .step_by(stride)
+            .filter(|c| model.exposure[*c as usize] > 0.0)
+            .collect()
+    };
+    let best = STARTS
+        .iter()
+        .map(|spread| model.climb(&model.start(*spread), &Cells::Some(&sample)))
+        .max_by(|a, b| a.value.total_cmp(&b.value))
+        .expect("there are starts");
+    let found = model.climb(&best.at, &Cells::All(training.region().len()));
+    if !found.converged {
+        let text = "the fit did not converge: the layers leave several answers equally likely";
+        return Err(Diagnostic::input("no_convergence", model.place, text)
+            .cure("take out a layer that repeats another, or give one of the parameters")
+            .into());
+    }
+    Ok(model.result(&found, context))
+}
+
+/// The cells a pass runs over.
+enum Cells<'a> {
+    All(usize),
+    Some(&'a [u32]),
+}
+
+impl Cells<'_> {
+    fn len(&self) -> usize {
+        match self {
+            Self::All(n) => *n,
+            Self::Some(list) => list.len(),
+        }
+    }
+
+    fn at(&self, i: usize) -> usize {
+        match self {
+            Self::All(_) => i,
+            Self::Some(list) => list[i] as usize,
+        }
+    }
+}
+
+/// Where a search ended.
+struct Found {
+    at: Vec<f64>,
+    value: f64,
+    converged: bool,
+}
+
+/// Area-weighted mean of G and its derivatives over the mean.
+struct Moments {
+    mean: f64,
+    slopes: Vec<f64>,
+}
+
+struct Model<'a> {
+    place: String,
+    terms: Vec<Term>,
+    base: Option<f64>,
+    training: &'a Training,
+    exposure: Vec<f64>,
+    places: Vec<(usize, f64)>,
+    total: f64,
+}
+
+impl<'a> Model<'a> {
+    fn new(asked: &Asked, training: &'a Training, layers: &ProxyStack) -> Outcome<Self> {
+        let place = format!("candidate `{}`", asked.name);
+        if asked.terms.len() * 2 + 1 > MOST {
+            let text = format!("more than {} layers in one candidate", MOST / 2);
+            return Err(Diagnostic::plan("too_many_layers", place, text).cure("use fewer layers").into());
+        }
+        let terms: Vec<Term> = asked
+            .terms
+            .iter()
+            .map(|t| Term::new(t, layers.layer(&t.layer), &place))
+            .collect::<Outcome<_>>()?;
+        let base = match asked.base {
+            Fit::Given(share) => Some(share.get()),
+            Fit::Fitted => None,
+        };
+        Ok(Self {
+            place,
+            terms,
+            base,
+            training,
+            exposure: (0..training.region().len()).map(|c| training.exposure(c)).collect(),
+            places: training.places(),
+            total: training.weight(),
+        })
+    }
+
+    /// Number of parameters, given ones included; the base is the last.
+    fn width(&self) -> usize {
+        self.terms.iter().map(Term::width).sum::<usize>() + 1
+    }
+
+    /// The free ranges of all parameters; `None` where given.
+    fn ranges(&self, spread: f64) -> Vec<Option<Free>> {
+        let of_terms = self.terms.iter().flat_map(|t| {
+            (0..t.width()).map(move |k| if t.given(k).is_some() { None } else { Some(t.free(k, spread)) })
+        });
+        let base = self.base.is_none().then_some(Free { start: 0.1, low: 0.0, high: MOST_BASE });
+        of_terms.chain([base]).collect()
+    }
+
+    fn start(&self, spread: f64) -> Vec<f64> {
+        let given: Vec<Option<f64>> =
+            self.terms.iter().flat_map(|t| (0..t.width()).map(|k| t.given(k))).chain([self.base]).collect();
+        self.ranges(spread)
+            .iter()
+            .zip(given)
+            .map(|(r, g)| {
+                g.unwrap_or_else(|| r.expect("free").start.clamp(r.expect("free").low, r.expect("free").high))
+            })
+            .collect()
+    }
+
+    fn ready(&self, at: &[f64]) -> Vec<[f64; 4]> {
+        let mut from = 0;
+        self.terms
+            .iter()
+            .map(|t| {
+                let ready = t.ready(&at[from..from + t.width()]);
+                from += t.width();
+                ready
+            })
+            .collect()
+    }
+
+    /// G in a cell, with derivatives of its logarithm.
+    #[inline]
+    fn product(&self, cell: usize, ready: &[[f64; 4]], slopes: &mut [f64; MOST]) -> f64 {
+        let (mut log, mut from) = (0.0, 0);
+        for (term, p) in self.terms.iter().zip(ready) {
+            log += term.log_curve(cell, p, &mut slopes[from..from + term.width()]);
+            from += term.width();
+        }
+        float::exp(log)
+    }
+
+    fn moments(&self, ready: &[[f64; 4]], cells: &Cells) -> Moments {
+        let width = self.width() - 1;
+        let totals = par_totals(cells.len(), width + 2, |i, sums| {
+            let cell = cells.at(i);
+            let area = self.exposure[cell];
+            if area > 0.0 {
+                let mut slopes = [0.0; MOST];
+                let g = area * self.product(cell, ready, &mut slopes);
+                sums[0] += area;
+                sums[1] += g;
+                sums[2..].iter_mut().zip(&slopes).for_each(|(s, d)| *s += g * d);
+            }
+        });
+        let mass = totals[1].max(f64::MIN_POSITIVE);
+        Moments { mean: mass / totals[0], slopes: totals[2..].iter().map(|s| s / mass).collect() }
+    }
+
+    /// f in a cell, and derivatives of its logarithm by all parameters into `scores`.
+    fn score(&self, cell: usize, base: f64, state: (&[[f64; 4]], &Moments), scores: &mut [f64; MOST]) -> f64 {
+        let (ready, moments) = state;
+        let mut slopes = [0.0; MOST];
+        let relative = self.product(cell, ready, &mut slopes) / moments.mean;
+        let f = ((1.0 - base) * relative + base).max(1e-300);
+        let part = (1.0 - base) * relative / f;
+        let width = moments.slopes.len();
+        for k in 0..width {
+            scores[k] = part * (slopes[k] - moments.slopes[k]);
+        }
+        scores[width] = (1.0 - relative) / f;
+        f
+    }
+
+    /// Log likelihood per unit, its gradient and the mean outer product of scores.
+    fn likelihood(&self, at: &[f64], cells: &Cells) -> (f64, Vec<f64>, Vec<f64>) {
+        let ready = self.ready(at);
+        let moments = self.moments(&ready, cells);
+        let n = self.width();
+        let base = at[n - 1];
+        let totals = par_totals(self.places.len(), 1 + n + n * n, |i, sums| {
+            let (cell, weight) = self.places[i];
+            let mut scores = [0.0; MOST];
+            let f = self.score(cell, base, (&ready, &moments), &mut scores);
+            sums[0] += weight * float::ln(f);
+            for a in 0..n {
+                sums[1 + a] += weight * scores[a];
+                for b in 0..n {
+                    sums[1 + n + a * n + b] += weight * scores[a] * scores[b];
+                }
+            }
+        });
+        let per_unit: Vec<f64> = totals.iter().map(|t| t / self.total).collect();
+        (per_unit[0], per_unit[1..=n].to_vec(), per_unit[1 + n..].to_vec())
+    }
+
+    /// Climbs to the nearest maximum within the bounds.
+    fn climb(&self, start: &[f64], cells: &Cells) -> Found {
+        let ranges = self.ranges(1.0);
+        let mut at = start.to_vec();
+        let (mut value, mut gradient, mut outer) = self.likelihood(&at, cells);
+        let mut damping = 1e-3;
+        for _ in 0..MOST_STEPS {
+            let free = movable(&ranges, &at, &gradient);
+            let Some(step) = damped(&gradient, &outer, &free, damping) else {
+                return Found { at, value, converged: true };
+            };
+            let promised: f64 = free.iter().zip(&step).map(|(&k, s)| gradient[k] * s).sum();
+            if promised < TOLERANCE {
+                return Found { at, value, converged: true };
+            }
+            let mut next = at.clone();
+            for (&k, s) in free.iter().zip(&step) {
+                let range = ranges[k].expect("free");
+                next[k] = (at[k] + s.clamp(-2.0, 2.0)).clamp(range.low, range.high);
+            }
+            let tried = self.likelihood(&next, cells);
+            if tried.0 > value {
+                at = next;
+                (value, gradient, outer) = tried;
+                damping = (damping * 0.2).max(1e-9);
+            } else {
+                damping *= 8.0;
+                if damping > 1e12 {
+                    // no step of any length helps: the promise is below what the sums can tell
+                    return Found { at, value, converged: promised < 1e-7 };
+                }
+            }
+        }
+        Found { at, value, converged: false }
+    }
+
+    /// f of every cell of the region, held-out ones included.
+    fn surface(&self, at: &[f64]) -> Vec<f64> {
+        let ready = self.ready(at);
+        let moments = self.moments(&ready, &Cells::All(self.exposure.len()));
+        let base = at[self.width() - 1];
+        (0..self.exposure.len())
+            .into_par_iter()
+            .with_min_len(4096)
+            .map(|cell| {
+                let mut slopes = [0.0; MOST];
+                (1.0 - base) * self.product(cell, &ready, &mut slopes) / moments.mean + base
+            })
+            .collect()
+    }
+
+    fn result(&self, found: &Found, context: Context) -> Fitted {
+        let mut density = self.surface(&found.at);
+        normalise(&mut density, self.training.region().areas());
+        let errors = context.blocks.map(|b| self.standard_errors(&found.at, b));
+        Fitted {
+            density,
+            parameters: self.parameters(&found.at, errors.as_deref()),
+            evidence: Vec::new(),
+            support: None,
+            warnings: self.remarks(&found.at),
+        }
+    }
+
+    fn parameters(&self, at: &[f64], errors: Option<&[Option<f64>]>) -> Vec<Parameter> {
+        let ranges = self.ranges(1.0);
+        let mut out = Vec::new();
+        let mut k = 0;
+        let interval = |k: usize, to: &dyn Fn(f64) -> f64| {
+            let error = errors?[k]?;
+            let range = ranges[k]?;
+            let end = |z: f64| to((at[k] + z * error).clamp(range.low, range.high));
+            Some((end(-1.959_963_985), end(1.959_963_985)))
+        };
+        for term in &self.terms {
+            for name in term.form.parameters().iter().take(term.width()) {
+                out.push(Parameter {
+                    name: format!("{}.{name}", term.layer),
+                    value: term.external(at[k]),
+                    interval: interval(k, &|v| term.external(v)),
+                    fitted: ranges[k].is_some(),
+                });
+                k += 1;
+            }
+            if let Some(offset) = term.offset() {
+                let name = format!("{}.offset", term.layer);
+                out.push(Parameter { name, value: offset, interval: None, fitted: false });
+            }
+        }
+        let fitted = ranges[k].is_some();
+        out.push(Parameter { name: "base".into(), value: at[k], interval: interval(k, &|v| v), fitted });
+        out
+    }
+
+    /// What the bounds say about the fit.
+    fn remarks(&self, at: &[f64]) -> Vec<Diagnostic> {
+        let mut out = Vec::new();
+        let mut k = 0;
+        for term in &self.terms {
+            let free = |i: usize| term.given(i).is_none().then(|| term.free(i, 1.0));
+            let first = free(0).map(|f| (at[k] <= f.low, at[k] >= f.high));
+            let rising = matches!(term.form, CurveForm::RisingPower | CurveForm::LogLinear);
+            let flat = first.is_some_and(|(low, high)| if rising { low } else { high });
+            if flat {
+                let way = if rising { "do not grow denser with" } else { "do not thin out away from" };
+                let text = format!("records {way} `{}` here: the term is flat", term.layer);
+                out.push(
+                    Diagnostic::plan("flat_term", &self.place, text)
+                        .cure("take it out of `uses`, or look for another layer"),
+                );
+            } else if let Some(bound) = self.bound(term, &at[k..k + term.width()]) {
+                out.push(bound);
+            }
+            k += term.width();
+        }
+        out
+    }
+
+    /// A warning when a parameter lies at an end of its range.
+    fn bound(&self, term: &Term, at: &[f64]) -> Option<Diagnostic> {
+        let (k, _) = at.iter().enumerate().find(|(k, v)| {
+            term.given(*k).is_none() && {
+                let range = term.free(*k, 1.0);
+                **v <= range.low || **v >= range.high
+            }
+        })?;
+        let name = term.form.parameters()[k];
+        let text = format!("`{}.{name}` lies at an end of its range ({})", term.layer, term.external(at[k]));
+        Some(
+            Diagnostic::plan("parameter_at_bound", &self.place, text)
+                .cure("give the parameter, or choose a curve of another form"),
+        )
+    }
+
+    /// Standard errors of the parameters from sums of scores by block; `None` where a parameter is
+    /// given or lies at a bound.
+    fn standard_errors(&self, at: &[f64], blocks: &Blocks) -> Vec<Option<f64>> {
+        let n = self.width();
+        let ranges = self.ranges(1.0);
+        let inner: Vec<usize> =
+            (0..n).filter(|&k| ranges[k].is_some_and(|r| at[k] > r.low && at[k] < r.high)).collect();
+        let (information, sums) = self.block_scores(at, blocks, &inner);
+        let m = inner.len();
+        let mut meat = vec![0.0; m * m];
+        for block in sums.chunks_exact(m.max(1)) {
+            for a in 0..m {
+                for b in 0..m {
+                    meat[a * m + b] += block[a] * block[b];
+                }
+            }
+        }
+        let mut errors = vec![None; n];
+        if blocks.count < 2 {
+            return errors;
+        }
+        let correction = blocks.count as f64 / (blocks.count - 1) as f64;
+        if let Some(bread) = linear::inverse(&information, m) {
+            for (a, &k) in inner.iter().enumerate() {
+                let row = &bread[a * m..(a + 1) * m];
+                let variance: f64 = (0..m)
+                    .flat_map(|i| (0..m).map(move |j| (i, j)))
+                    .map(|(i, j)| row[i] * meat[i * m + j] * row[j])
+                    .sum();
+                errors[k] = Some((variance * correction).sqrt());
+            }
+        }
+        errors
+    }
+
+    /// Fisher information, and by block the sum of scores of its units less what was expected.
+    fn block_scores(&self, at: &[f64], blocks: &Blocks, inner: &[usize]) -> (Vec<f64>, Vec<f64>) {
+        let ready = self.ready(at);
+        let moments = self.moments(&ready, &Cells::All(self.exposure.len()));
+        let (m, base) = (inner.len(), at[self.width() - 1]);
+        let area = sum(self.exposure.iter().copied());
+        let mut information = vec![0.0; m * m];
+        let mut sums = vec![0.0; m * blocks.count];
+        let mut scores = [0.0; MOST];
+        for cell in 0..self.exposure.len() {
+            let f = self.score(cell, base, (&ready, &moments), &mut scores);
+            let expected = self.total * self.exposure[cell] * f / area;
+            let block = blocks.of_cell[cell] as usize * m;
+            for (a, &k) in inner.iter().enumerate() {
+                sums[block + a] -= expected * scores[k];
+                for (b, &l) in inner.iter().enumerate() {
+                    information[a * m + b] += expected * scores[k] * scores[l];
+                }
+            }
+        }
+        for &(cell, weight) in &self.places {
+            self.score(cell, base, (&ready, &moments), &mut scores);
+            let block = blocks.of_cell[cell] as usize * m;
+            inner.iter().enumerate().for_each(|(a, &k)| sums[block + a] += weight * scores[k]);
+        }
+        (information, sums)
+    }
+}
+
+/// Free parameters that are not held at a bound by their gradient.
+fn movable(ranges: &[Option<Free>], at: &[f64], gradient: &[f64]) -> Vec<usize> {
+    (0..at.len())
+        .filter(|&k| {
+            ranges[k].is_some_and(|r| {
+                !(at[k] <= r.low && gradient[k] <= 0.0 || at[k] >= r.high && gradient[k] >= 0.0)
+            })
+        })
+        .collect()
+}
+
+/// A damped step for the movable parameters; `None` when there is nothing to move.
+fn damped(gradient: &[f64], outer: &[f64], free: &[usize], damping: f64) -> Option<Vec<f64>> {
+    let n = gradient.len();
+    let m = free.len();
+    if m == 0 {
+        return None;
+    }
+    let mut matrix = vec![0.0; m * m];
+    for (a, &k) in free.iter().enumerate() {
+        for (b, &l) in free.iter().enumerate() {
+            matrix[a * m + b] = outer[k * n + l];
+        }
+        // the added constant keeps directions that change nothing finite
+        matrix[a * m + a] += damping * outer[k * n + k] + 1e-10;
+    }
+    let rhs: Vec<f64> = free.iter().map(|&k| gradient[k]).collect();
+    linear::solve(&matrix, &rhs)
+}

@@ -1,0 +1,238 @@
+//! The lattice a kernel runs on: the region's cells, or squares of several of them where the
+//! bandwidth is wide against the cell.
+
+use ndarray::Array2;
+use rayon::prelude::*;
+
+use crate::grid::{Grid, MEAN_RADIUS, Metric};
+use crate::maths::{float, gaussian};
+use crate::records::Training;
+
+/// A kernel lattice.
+pub(super) struct Lattice {
+    step: usize,
+    columns: usize,
+    grid_columns: usize,
+    form: Form,
+    /// Observed area of each lattice cell, m².
+    mass: Array2<f64>,
+}
+
+/// Plane or globe.
+enum Form {
+    Plane { width: f64, height: f64 },
+    Globe { latitudes: Vec<f64>, step: f64, wraps: bool },
+}
+
+/// A kernel power: densities use the kernel itself, supports its square.
+#[derive(Clone, Copy, PartialEq)]
+pub(super) enum Power {
+    One,
+    Two,
+}
+
+/// A place of the lattice: row, column.
+pub(super) type Spot = (usize, usize);
+
+impl Lattice {
+    /// The lattice of squares of `step` cells a side.
+    pub(super) fn new(training: &Training, step: usize) -> Self {
+        let region = training.region();
+        let grid = region.grid();
+        let (rows, columns) = (grid.rows.div_ceil(step), grid.columns.div_ceil(step));
+        let mut mass = Array2::zeros((rows, columns));
+        for cell in 0..region.len() {
+            let (column, row) = region.position(cell);
+            mass[(row / step, column / step)] += training.exposure(cell);
+        }
+        Self { step, columns, grid_columns: grid.columns, form: form(grid, step, rows), mass }
+    }
+
+    /// Where a cell of the region lies.
+    pub(super) fn spot(&self, training: &Training, cell: usize) -> Spot {
+        let flat = training.region().flat(cell);
+        (flat / self.grid_columns / self.step, flat % self.grid_columns / self.step)
+    }
+
+    /// Mass of the kernel that falls on observed area, at each spot.
+    pub(super) fn edges(&self, sigma: f64, spots: &[Spot]) -> Vec<f64> {
+        match &self.form {
+            Form::Plane { width, height } => {
+                let field = convolve(&self.mass, sigma, (*width, *height), Power::One);
+                spots.iter().map(|s| field[*s]).collect()
+            }
+            Form::Globe { .. } => self.globe_edges(sigma, spots),
+        }
+    }
+
+    /// Σ weight·kernel per m² over the lattice.
+    pub(super) fn spread(&self, sigma: f64, spots: &[Spot], weights: &[f64], power: Power) -> Array2<f64> {
+        match &self.form {
+            Form::Plane { width, height } => {
+                let mut field = Array2::zeros(self.mass.dim());
+                spots.iter().zip(weights).for_each(|(s, w)| field[*s] += w);
+                convolve(&field, sigma, (*width, *height), power)
+            }
+            Form::Globe { .. } => self.globe_spread(sigma, spots, weights, power),
+        }
+    }
+
+    /// Kernel per m² between two spots.
+    pub(super) fn kernel(&self, taps: &Taps, a: Spot, b: Spot) -> f64 {
+        match &self.form {
+            Form::Plane { .. } => {
+                let tap = |t: &[f64], d: usize| t.get(d).copied().unwrap_or(0.0);
+                tap(&taps.down, a.0.abs_diff(b.0)) * tap(&taps.across, a.1.abs_diff(b.1)) / taps.area
+            }
+            Form::Globe { latitudes, step, wraps } => {
+                let mut apart = a.1.abs_diff(b.1);
+                if *wraps {
+                    apart = apart.min(self.columns - apart);
+                }
+                on_globe(latitudes[a.0], latitudes[b.0], apart as f64 * step, taps.sigma)
+            }
+        }
+    }
+
+    /// What [`Self::kernel`] needs for a standard deviation in metres.
+    pub(super) fn taps(&self, sigma: f64) -> Taps {
+        match &self.form {
+            Form::Plane { width, height } => Taps {
+                sigma,
+                across: gaussian::taps(sigma / width),
+                down: gaussian::taps(sigma / height),
+                area: width * height,
+            },
+            Form::Globe { .. } => Taps { sigma, across: Vec::new(), down: Vec::new(), area: 1.0 },
+        }
+    }
+
+    fn globe_edges(&self, sigma: f64, spots: &[Spot]) -> Vec<f64> {
+        spots
+            .par_iter()
+            .map(|&(row, column)| {
+                self.rows_in_reach(row, sigma)
+                    .map(|other| {
+                        let line = self.line(row, other, sigma, Power::One);
+                        let mut total = 0.0;
+                        self.along(column, &line, |c, k| total += k * self.mass[(other, c)]);
+                        total
+                    })
+                    .sum()
+            })
+            .collect()
+    }
+
+    fn globe_spread(&self, sigma: f64, spots: &[Spot], weights: &[f64], power: Power) -> Array2<f64> {
+        let rows = self.mass.nrows();
+        let mut by_row: Vec<Vec<(usize, f64)>> = vec![Vec::new(); rows];
+        spots.iter().zip(weights).for_each(|(s, w)| by_row[s.0].push((s.1, *w)));
+        let lines: Vec<Vec<f64>> = (0..rows)
+            .into_par_iter()
+            .map(|row| {
+                let mut out = vec![0.0; self.columns];
+                for other in self.rows_in_reach(row, sigma).filter(|&o| !by_row[o].is_empty()) {
+                    let line = self.line(other, row, sigma, power);
+                    for &(column, weight) in &by_row[other] {
+                        self.along(column, &line, |c, k| out[c] += k * weight);
+                    }
+                }
+                out
+            })
+            .collect();
+        Array2::from_shape_vec((rows, self.columns), lines.concat()).expect("one line a row")
+    }
+
+    /// Rows within the kernel's reach of a row.
+    fn rows_in_reach(&self, row: usize, sigma: f64) -> std::ops::RangeInclusive<usize> {
+        let Form::Globe { latitudes, .. } = &self.form else { unreachable!("planes have no lines") };
+        let reach = (gaussian::REACH * sigma / MEAN_RADIUS).to_degrees();
+        let near = |r: &usize| (latitudes[*r] - latitudes[row]).abs() <= reach;
+        let first = (0..=row).rev().take_while(near).last().unwrap_or(row);
+        let last = (row..latitudes.len()).take_while(near).last().unwrap_or(row);
+        first..=last
+    }
+
+    /// Kernel values from a spot of one row to another row, at column distances 0, 1, ….
+    fn line(&self, from: usize, to: usize, sigma: f64, power: Power) -> Vec<f64> {
+        let Form::Globe { latitudes, step, wraps } = &self.form else { unreachable!("planes have no lines") };
+        let most = if *wraps { self.columns / 2 } else { self.columns - 1 };
+        (0..=most)
+            .map(|d| on_globe(latitudes[from], latitudes[to], d as f64 * step, sigma))
+            .take_while(|k| *k > 0.0)
+            .map(|k| if power == Power::Two { k * k } else { k })
+            .collect()
+    }
+
+    /// Calls `each(column, kernel)` for the columns on both sides of a column.
+    fn along(&self, column: usize, line: &[f64], mut each: impl FnMut(usize, f64)) {
+        let Form::Globe { wraps, .. } = &self.form else { unreachable!("planes have no lines") };
+        let n = self.columns;
+        for (d, &k) in line.iter().enumerate() {
+            if *wraps {
+                each((column + d) % n, k);
+                if d > 0 && 2 * d != n {
+                    each((column + n - d) % n, k);
+                }
+            } else {
+                if column + d < n {
+                    each(column + d, k);
+                }
+                if d > 0 && d <= column {
+                    each(column - d, k);
+                }
+            }
+        }
+    }
+}
+
+/// Kernel taps of one bandwidth.
+pub(super) struct Taps {
+    pub(super) sigma: f64,
+    across: Vec<f64>,
+    down: Vec<f64>,
+    area: f64,
+}
+
+fn form(grid: &Grid, step: usize, rows: usize) -> Form {
+    match grid.metric() {
+        Metric::Planar => {
+            let (width, height) = grid.cell_sides(0);
+            Form::Plane { width: width * step as f64, height: height * step as f64 }
+        }
+        Metric::Geodesic => Form::Globe {
+            latitudes: (0..rows)
+                .map(|r| grid.y_at((r as f64 + 0.5) * step as f64).clamp(-90.0, 90.0))
+                .collect(),
+            step: grid.transform[1] * step as f64,
+            wraps: grid.wraps() && grid.columns.is_multiple_of(step),
+        },
+    }
+}
+
+fn convolve(field: &Array2<f64>, sigma: f64, sides: (f64, f64), power: Power) -> Array2<f64> {
+    let taps = |side: f64| {
+        let mut taps = gaussian::taps(sigma / side);
+        if power == Power::Two {
+            taps.iter_mut().for_each(|t| *t *= *t);
+        }
+        taps
+    };
+    let cell = sides.0 * sides.1;
+    let area = if power == Power::Two { cell * cell } else { cell };
+    let mut out = gaussian::convolve(field.view(), &taps(sides.0), &taps(sides.1));
+    out.par_mapv_inplace(|v| v / area);
+    out
+}
+
+/// Gaussian of the great-circle distance, per m²; 0 beyond the kernel's reach.
+fn on_globe(a: f64, b: f64, apart: f64, sigma: f64) -> f64 {
+    let (a, b) = (a.to_radians(), b.to_radians());
+    let half = |angle: f64| float::square(float::sin(angle / 2.0));
+    let h = half(b - a) + float::cos(a) * float::cos(b) * half(apart.to_radians());
+    let distance = 2.0 * MEAN_RADIUS * float::asin(h.sqrt().min(1.0));
+    if distance > gaussian::REACH * sigma {
+        return 0.0;
+    }
+    float::exp(-0.5 * float::square(distance / sigma)) / (2.0 * std::f64::consts::PI * sigma * sigma)
+}

@@ -1,0 +1,59 @@
+//! One row of a record file, as the gate hands it in.
+
+/// A row, readable or not.
+pub struct Row<'a> {
+    /// Which file of the plan's list, from 0.
+    pub file: usize,
+    /// Line of a text from 1, or feature id.
+    pub line: u64,
+    /// What it holds.
+    pub content: Content<'a>,
+}
+
+/// What a row holds.
+pub enum Content<'a> {
+    /// Nothing that can be read, and why.
+    Unreadable(&'a str),
+    /// The fields asked for.
+    Fields(Fields<'a>),
+}
+
+/// Where a row says it was.
+#[derive(Debug, Clone, Copy)]
+pub enum Place<'a> {
+    /// Two fields of text.
+    Text {
+        /// Longitude or easting.
+        x: &'a str,
+        /// Latitude or northing.
+        y: &'a str,
+    },
+    /// A point geometry.
+    Point(f64, f64),
+    /// A feature without geometry.
+    Missing,
+}
+
+/// The fields of a row that matter; a column that does not exist reads as empty.
+pub struct Fields<'a> {
+    /// The place.
+    pub place: Place<'a>,
+    /// Date of the event.
+    pub date: &'a str,
+    /// Year, month and day in columns of their own.
+    pub year_month_day: [&'a str; 3],
+    /// Who observed.
+    pub observer: &'a str,
+    /// Which data set.
+    pub dataset: &'a str,
+    /// Radius of uncertainty.
+    pub uncertainty: &'a str,
+    /// Occurrence status.
+    pub status: &'a str,
+    /// Number of individuals.
+    pub individuals: &'a str,
+    /// Geodetic datum of the coordinates; empty: the plan's.
+    pub datum: &'a str,
+    /// Columns named in `keep`, in the plan's order, then those in `leave_out`.
+    pub filters: &'a [&'a str],
+}

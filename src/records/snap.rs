@@ -1,0 +1,84 @@
+//! Moving records that lie just outside the region to the nearest inside cell.
+
+use kdtree::KdTree;
+use kdtree::distance::squared_euclidean;
+
+use crate::grid::{Metric, Region, geocentric, geodesic};
+use crate::units::Metres;
+
+/// Finds the nearest inside cell within a distance.
+pub struct Snapper {
+    tree: KdTree<f64, u32, Vec<f64>>,
+    reach: f64,
+}
+
+/// How many nearest centres are looked at for the nearest cell.
+const CANDIDATES: usize = 6;
+
+impl Snapper {
+    /// Indexes the cells at the region's rim.
+    pub fn new(region: &Region, reach: Metres) -> Self {
+        let dimensions = match region.grid().metric() {
+            Metric::Planar => 2,
+            Metric::Geodesic => 3,
+        };
+        let mut tree = KdTree::new(dimensions);
+        for cell in (0..region.len()).filter(|&c| at_rim(region, c)) {
+            let (x, y) = region.centre(cell);
+            tree.add(point(region, x, y), cell as u32).expect("centres are finite");
+        }
+        Self { tree, reach: reach.get() }
+    }
+
+    /// The nearest inside cell, when it is within reach of the place (to its edge, not its centre).
+    pub fn nearest(&self, region: &Region, x: f64, y: f64) -> Option<usize> {
+        if !x.is_finite() || !y.is_finite() {
+            return None;
+        }
+        let near = self.tree.nearest(&point(region, x, y), CANDIDATES, &squared_euclidean).ok()?;
+        near.iter()
+            .map(|(_, cell)| (to_cell(region, **cell as usize, x, y), **cell as usize))
+            .min_by(|a, b| a.0.total_cmp(&b.0).then(a.1.cmp(&b.1)))
+            .filter(|(distance, _)| *distance <= self.reach)
+            .map(|(_, cell)| cell)
+    }
+}
+
+/// Whether a neighbour of the cell, diagonals included, is outside.
+fn at_rim(region: &Region, cell: usize) -> bool {
+    let grid = region.grid();
+    let (column, row) = region.position(cell);
+    (-1..=1_isize).any(|dy| {
+        (-1..=1_isize).any(|dx| {
+            let (c, r) = (column as isize + dx, row as isize + dy);
+            let within = (0..grid.columns as isize).contains(&c) && (0..grid.rows as isize).contains(&r);
+            !within || region.compact(r as usize * grid.columns + c as usize).is_none()
+        })
+    })
+}
+
+/// Coordinates in which straight distance orders places by nearness.
+fn point(region: &Region, x: f64, y: f64) -> Vec<f64> {
+    match region.grid().metric() {
+        Metric::Planar => vec![x, y],
+        Metric::Geodesic => geocentric(x, y).to_vec(),
+    }
+}
+
+/// Distance in metres from a place to a cell's rectangle.
+fn to_cell(region: &Region, cell: usize, x: f64, y: f64) -> f64 {
+    let grid = region.grid();
+    let (cx, cy) = region.centre(cell);
+    let (hx, hy) = (grid.transform[1] / 2.0, grid.transform[5].abs() / 2.0);
+    match grid.metric() {
+        Metric::Planar => {
+            let (px, py) = (x.clamp(cx - hx, cx + hx), y.clamp(cy - hy, cy + hy));
+            (x - px).hypot(y - py) * grid.metres_per_unit()
+        }
+        Metric::Geodesic => {
+            let x = cx + (x - cx + 180.0).rem_euclid(360.0) - 180.0;
+            let near = (x.clamp(cx - hx, cx + hx), y.clamp(cy - hy, cy + hy));
+            geodesic((x, y), near)
+        }
+    }
+}
