@@ -110,9 +110,10 @@ fn all_is_said_at_once_in_order() {
 
 #[test]
 fn unknown_keys_name_the_nearest() {
-    check(&with(TOP, "sed = 1"), "unknown_key", "sed", &["`seed`", "the top of the plan"]);
+    check(&with(TOP, "sed = 1"), "unknown_key", "sed", &["`seed`", "top level"]);
     check(&with("[records]", "longitud = \"x\""), "unknown_key", "longitud", &["`longitude`", "`[records]`"]);
     check(&with("[grid]", "folds = 3"), "unknown_key", "folds", &["belongs in `[holdout]`", "nearest"]);
+    check(&with("[grid]", "xyz = 1"), "unknown_key", "xyz", &["known here: `like`, `region`"]);
     check(&with("end", "[holdouts]\nfolds = 5"), "unknown_key", "holdouts", &["`holdout`"]);
     check(&SHORTEST.replace("{}", "{ kernal = 1 }"), "unknown_key", "kernal", &["`kernel`", "`density`"]);
     check(&access("roads = { curve = \"power\", scales = 1 }"), "unknown_key", "scales", &["`scale`"]);

@@ -11,12 +11,10 @@ const OWN: [&str; 4] = ["region", "crs", "cell", "touching"];
 /// Reads the grid; `None` with a report when something is wrong.
 pub(super) fn read(log: &mut Log, table: &Table) -> Option<GridPlan> {
     if table.has("like") {
-        for key in OWN {
-            if let Some(item) = table.any(key) {
-                let text = format!("`like` and `{key}` cannot stand together");
-                let cure = format!("keep `like` for the grid of a raster, or {} for a new one", OWN_WORDS);
-                log.say(&item.at, "grid_choice", text, &cure);
-            }
+        if let Some(item) = OWN.iter().find_map(|key| table.any(key)) {
+            let text = format!("`like` and `{}` cannot stand together", item.key);
+            let cure = format!("keep `like` for the grid of a raster, or {OWN_WORDS} for a new one");
+            log.say(&item.at, "grid_choice", text, &cure);
         }
         return table.string("like").map(GridPlan::Like);
     }

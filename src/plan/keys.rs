@@ -155,7 +155,7 @@ impl Key {
 
 /// The tables of a plan and what messages call them, in the order of the reference.
 pub(super) const SECTIONS: [(&str, &str); 18] = [
-    ("", "the top of the plan"),
+    ("", "the plan's top level"),
     ("grid", "`[grid]`"),
     ("records", "`[records]`"),
     ("records.source", "`[[records.source]]`"),

@@ -13,7 +13,11 @@ pub(super) fn refuse(log: &mut Log, known: &Key, item: &Item) {
     match known.since {
         Since::Later if belongs_to_later_measure(known) => {} // its measure is refused, once
         Since::Later => {
-            not_supported(log, &item.at, &format!("`{}`", item.key), &format!("remove `{}`", item.key));
+            let cure = match item.key {
+                "blend" => "remove this candidate".to_string(), // nothing of it would be left
+                key => format!("remove `{key}`"),
+            };
+            not_supported(log, &item.at, &format!("`{}`", item.key), &cure);
         }
         Since::Only(value) => refuse_others(log, item, value),
         Since::Now => refuse_words(log, known, item),

@@ -67,5 +67,11 @@ fn explain(log: &Log, span: &Span, message: &str) -> (String, String) {
         let cure = "keep one of them, and write lists of tables as `[[…]]`";
         return (format!("`{found}` stands twice"), cure.into());
     }
+    if message.starts_with("invalid basic string") || message.starts_with("invalid literal string") {
+        return ("a text is not closed by the quote it begins with".into(), "add the closing quote".into());
+    }
+    if message.starts_with("unclosed table") {
+        return ("the header of a table has no closing bracket".into(), "add `]`".into());
+    }
     (format!("this is not TOML: {message}"), "correct the line".into())
 }

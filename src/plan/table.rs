@@ -171,6 +171,9 @@ fn whole_missing(name: &str, meaning: &str) -> (String, String) {
     }
 }
 
+/// So many slips of the pen apart, the nearest key is surely the one that was meant.
+const FEW_SLIPS: usize = 2;
+
 /// Reports a key that is not known here; `false`, as it can't be read.
 fn unknown(log: &mut Log, section: &str, item: &Item) -> bool {
     let here = heading(section);
@@ -183,9 +186,8 @@ fn unknown(log: &mut Log, section: &str, item: &Item) -> bool {
     };
     if let Some(near) = near {
         cure += &format!("the nearest key here is `{near}`");
-        let known = listed(keys_of(section).map(|key| key.name), "and");
-        if near.len() < known.len() - 2 {
-            cure += &format!(" (known here: {known})");
+        if elsewhere.is_empty() && strsim::damerau_levenshtein(near, item.key) > FEW_SLIPS {
+            cure += &format!(" (known here: {})", listed(keys_of(section).map(|key| key.name), "and"));
         }
     }
     log.say(&item.at, "unknown_key", format!("`{}` is no key of {here}", item.key), &cure);
