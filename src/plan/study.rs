@@ -38,7 +38,7 @@ pub struct StudyPlan {
     pub records: RecordsPlan,
     /// Its layers.
     pub layers: Vec<LayerPlan>,
-    /// Its candidates, `uniform` last unless the plan names it.
+    /// Its candidates in the order of the plan, then the baseline `uniform`, which is always there.
     pub candidates: Vec<CandidatePlan>,
     /// How it is checked.
     pub holdout: HoldoutPlan,
