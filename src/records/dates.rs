@@ -60,7 +60,8 @@ impl DateRange {
 /// The second end of a range, completed from the first where it is abbreviated.
 fn single_completed(from: &str, to: &str) -> Option<DateRange> {
     let day_part = from.split(['T', ' ']).next()?;
-    if to.len() < day_part.len() && !to.contains('T') && is_digits(&to.replace('-', "")) && to.len() != 4 {
+    let whole = to.get(..4).is_some_and(is_digits);
+    if to.len() < day_part.len() && !to.contains('T') && is_digits(&to.replace('-', "")) && !whole {
         let head = day_part.get(..day_part.len() - to.len())?;
         return single(&format!("{head}{to}"));
     }
@@ -167,6 +168,7 @@ mod tests {
         check("2007-W46", Some(("2007-11-12", "2007-11-18")));
         check("2004-03/2019", Some(("2004-03-01", "2019-12-31")));
         check("2007-11-13T08:00/10:30", Some(("2007-11-13", "2007-11-13")));
+        check("2004-03-15/2019-10", Some(("2004-03-15", "2019-10-31")));
         check("2007-11-28/12-03", Some(("2007-11-28", "2007-12-03")));
         check("2007-11-13 08:15:00", Some(("2007-11-13", "2007-11-13")));
     }

@@ -27,7 +27,7 @@ impl Bytes {
             .iter()
             .find_map(|(unit, factor)| {
                 let number: f64 = text.strip_suffix(unit)?.trim().parse().ok()?;
-                (number.is_finite() && number > 0.0).then(|| Self((number * *factor as f64) as u64))
+                (number.is_finite() && number > 0.0).then_some(Self((number * *factor as f64) as u64))
             })
             .ok_or_else(|| format!("`{text}` is no size: write a number with a unit, such as \"4 GiB\""))
     }
