@@ -97,7 +97,7 @@ fn people_nearby(people: &[Option<f64>], sd: f64) -> Field {
     pass(&pass(&fine, 1, 0), 0, 1)
 }
 
-/// The reserve lies on heath, a walk away from the main roads, in the west of the land.
+/// The reserve lies on heath, a walk away from the main roads, and not far in the east.
 fn pick_reserve(land: &Land, climate: &Climate, main: &Field) -> usize {
     let walk = |&cell: &usize| {
         land.inside[cell] > 3_000.0 && (3_000.0..6_500.0).contains(&main[cell]) && column_row(cell).0 < 190

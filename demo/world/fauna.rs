@@ -31,7 +31,7 @@ const EPITHETS: [&str; 10] = [
 ];
 
 /// Finds of all species together in an hour of average skill, averaged over the land.
-const FINDS_PER_HOUR: f64 = 2.4;
+const FINDS_PER_HOUR: f64 = 2.1;
 
 /// What a species asks of a place.
 struct Niche {

@@ -57,7 +57,7 @@ impl Land {
         fill_specks(&mut inside);
         let sea = (0..CELLS).map(|cell| shore[cell] < 0.0 && inside[cell] <= 0.0).collect();
         let height = (0..CELLS).map(|cell| if inside[cell] > 0.0 { height(cell, &shore) } else { 0.0 });
-        let height = smooth_out_of_water(height.collect(), &inside);
+        let height = rounded(height.collect(), &inside);
         let mainland = largest_piece(&inside);
         Land { inside, sea, mainland, height, shore }
     }
@@ -131,8 +131,8 @@ fn height(cell: usize, shore: &Field) -> f64 {
     (low + 640.0 * tilt * rise * (1.0 + 1.5 * hills) + 70.0 * (hills + 0.2).max(0.0)).max(1.0)
 }
 
-/// Lake shores lie low: heights next to water are pulled towards their surroundings' lowest.
-fn smooth_out_of_water(height: Field, inside: &Field) -> Field {
+/// Rounds the heights: each cell is averaged with the land around it.
+fn rounded(height: Field, inside: &Field) -> Field {
     let mean = |cell: usize| {
         let around = AROUND.iter().filter_map(|&(dx, dy)| neighbour(cell, dx, dy));
         let land: Vec<f64> = around.filter(|&other| inside[other] > 0.0).map(|other| height[other]).collect();
