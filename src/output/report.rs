@@ -9,6 +9,8 @@ pub struct Page {
     pub time: String,
     /// The plan with all defaults written out.
     pub plan: String,
+    /// The command as it was typed.
+    pub command: String,
 }
 
 /// `report.html`.
