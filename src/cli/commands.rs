@@ -7,8 +7,8 @@ use serde_json::Value;
 use trodden::diag::{Diagnostic, Outcome, Warnings};
 use trodden::gate::{Files, Staging};
 use trodden::output::{
-    Checked, Finding, Page, Tool, check_json, comparison_csv, comparison_json, effort_json, finish,
-    held_out_csv,
+    Checked, CheckedInput, Finding, Page, Tool, check_json, comparison_csv, comparison_json, effort_json,
+    finish, held_out_csv,
 };
 use trodden::plan::{StudyPlan, read, resolved};
 use trodden::records::{Rule, Sink};
@@ -86,7 +86,7 @@ pub fn check(args: &CheckArgs, common: &Common, voice: Voice) -> Outcome<()> {
         .map(|l| (l.file.as_str(), l.table.as_deref()))
         .chain(plan.records.files.iter().map(|f| (f.as_str(), plan.records.table.as_deref())))
         .filter_map(|(file, table)| trodden::gate::Sources::peek(&files, file, table).ok())
-        .map(|p| (p.file, p.kind, p.crs, p.extent, p.count))
+        .map(|p| CheckedInput { file: p.file, kind: p.kind, crs: p.crs, extent: p.extent, count: p.count })
         .collect();
     let (problems, records) = match &outcome {
         Ok(g) => (Vec::new(), Some(g.records.ledger.lines())),

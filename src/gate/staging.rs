@@ -69,6 +69,7 @@ impl Staging {
     ///
     /// # Errors
     /// When the disk does not take it.
+    #[allow(clippy::disallowed_methods, reason = "this is the atomic writer")]
     pub fn write(&mut self, name: &str, bytes: &[u8]) -> Outcome<()> {
         let path = self.path(name);
         fs::write(path, bytes).map_err(|e| self.failed(name, &e).into())
@@ -83,7 +84,6 @@ impl Staging {
     ///
     /// # Errors
     /// When the disk does not take them.
-    #[allow(clippy::disallowed_methods, reason = "this is the atomic writer")]
     pub fn commit(mut self) -> Outcome<Vec<PathBuf>> {
         for name in &self.names {
             File::open(self.hidden.join(name))

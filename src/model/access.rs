@@ -28,7 +28,7 @@ use super::terms::{Free, Term};
 /// Most parameters a candidate may have (two per layer and the base).
 const MOST: usize = 33;
 /// Cells of the sample on which the search begins.
-const SAMPLE: usize = 50_000;
+const SAMPLE: usize = 20_000;
 /// Starts of the search: how far the first scales are stretched.
 const STARTS: [f64; 3] = [0.3, 1.0, 3.0];
 /// The search is over when a step promises less than this many nats per unit.

@@ -63,7 +63,7 @@ pub fn distance(features: &Features, region: &Region) -> Option<Vec<f64>> {
             nearest(segments, region, |x, y| [x, y])?.into_iter().map(|d| d * unit).collect::<Vec<f64>>()
         }
         Metric::Geodesic => {
-            let segments = features.shapes.par_iter().flat_map_iter(|s| spatial(s)).collect();
+            let segments = features.shapes.par_iter().flat_map_iter(spatial).collect();
             nearest(segments, region, geocentric)?.into_iter().map(arc_of_chord).collect()
         }
     };
