@@ -209,6 +209,26 @@ fn too_few(split: Split, found: usize, folds: usize) -> Diagnostic {
 }
 
 #[cfg(test)]
+impl Training {
+    /// A training part of units of weight 1 in these cells, each an outing of its own.
+    pub(crate) fn of_cells(region: Arc<Region>, cells: &[u32]) -> Self {
+        let unit = |(i, cell): (usize, &u32)| Unit {
+            cell: *cell,
+            weight: 1.0,
+            outing: i as u32,
+            uncertainty: f32::NAN,
+        };
+        Self { region, units: cells.iter().enumerate().map(unit).collect(), available: None, outings: true }
+    }
+
+    /// The same units in other outings.
+    pub(crate) fn with_outings(mut self, outing: impl Fn(usize) -> u32) -> Self {
+        self.units.iter_mut().enumerate().for_each(|(i, u)| u.outing = outing(i));
+        self
+    }
+}
+
+#[cfg(test)]
 mod tests {
     use super::*;
 
