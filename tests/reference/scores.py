@@ -1,0 +1,134 @@
+"""The four scores, against scikit-learn, scipy and statsmodels.
+
+A candidate with all parameters given has the same surface in every fold, so that the training
+surfaces are known from `surface-NAME.tif` and each score can be worked out again from the files.
+"""
+
+import csv
+import os
+import sys
+import tempfile
+
+import numpy as np
+import statsmodels.api as sm
+from scipy.stats import spearmanr
+from sklearn.metrics import roc_auc_score
+
+import study
+
+WEST, NORTH, CELL, COLUMNS, ROWS = 500_000.0, 5_000_000.0, 100.0, 60, 50
+
+PLAN = study.HEAD + """[[layer]]
+name = "road"
+measure = "distance"
+file = "road.geojson"
+[[candidate]]
+name = "fixed"
+uses = { road = { curve = "half-normal", scale = "700 m" } }
+base = 0.2
+[[candidate]]
+name = "recorded"
+density = { bandwidth = "400 m" }
+[holdout]
+split = "random"
+folds = 4
+resamples = 199
+[surface]
+candidate = "fixed"
+per = "km2"
+scale = "mean"
+[output]
+details = true
+"""
+
+
+def world(folder):
+    """A grid with a lake, a road, and 400 points that are more frequent near the road."""
+    rng = np.random.default_rng(5)
+    land = np.ones((ROWS, COLUMNS))
+    land[10:18, 40:52] = -9999
+    study.raster(folder, "land.tif", land, (WEST, NORTH), CELL, nodata=-9999)
+    study.line(folder, "road.geojson", [[WEST, NORTH - 2_550.0], [WEST + 6_000.0, NORTH - 2_550.0]])
+    y = np.where(rng.random(900) < 0.6, rng.normal(2_550, 500, 900), rng.random(900) * 5_000).clip(1, 4_999)
+    x = rng.random(900) * 6_000
+    on_land = land[(y // CELL).astype(int), (x // CELL).astype(int)] > 0
+    study.points(folder, WEST + x[on_land][:400], NORTH - y[on_land][:400])
+
+
+def held_out(folder):
+    """Rows of held-out-units.csv by candidate."""
+    rows = {}
+    with open(os.path.join(folder, "out", "held-out-units.csv"), encoding="utf-8", newline="") as source:
+        for row in csv.DictReader(source):
+            rows.setdefault(row["candidate"], []).append(row)
+    return rows
+
+
+def column(rows, name, kind=float):
+    return np.array([kind(row[name]) for row in rows])
+
+
+def auc(cells, at):
+    """Chance that a unit's cell outranks a cell of the region; the cells have equal areas."""
+    truth = np.r_[np.ones(len(at)), np.zeros(len(cells))]
+    return roc_auc_score(truth, np.r_[at, cells])
+
+
+def boyce(cells, at):
+    """Continuous Boyce index (Hirzel et al. 2006): 101 windows a tenth of the range wide."""
+    low, high = cells.min(), cells.max()
+    width = (high - low) / 10
+    starts = np.linspace(low, high - width, 101)
+    share = lambda v: np.array([((v >= s) & (v <= s + width)).mean() for s in starts])
+    expected, found = share(cells), share(at)
+    full = expected > 0
+    return spearmanr(found[full] / expected[full], (starts + width / 2)[full]).statistic
+
+
+def slope(density, counts):
+    """Coefficient of log density in a Poisson regression of counts by cell (equal areas)."""
+    fit = sm.GLM(counts, sm.add_constant(np.log(density)), family=sm.families.Poisson()).fit(tol=1e-12)
+    return fit.params[1]
+
+
+def main():
+    with tempfile.TemporaryDirectory() as folder:
+        world(folder)
+        figures = study.run(folder, PLAN)
+        by_candidate = held_out(folder)
+        surface = study.read(folder, "surface-fixed.tif")
+        with open(os.path.join(folder, "out", "held-out.csv"), encoding="utf-8", newline="") as source:
+            by_fold = list(csv.DictReader(source))
+
+    for name, rows in by_candidate.items():
+        scores = study.candidate(figures, name)["scores"]
+        if len(rows) != 400 or sorted(column(rows, "unit", int)) != sorted(set(column(rows, "unit", int))):
+            sys.exit(f"{name}: not every unit is held out once")
+        due = column(rows, "log_density").mean()
+        study.expect(f"{name}: mean of the units' log density", scores["log_score"]["value"], due, 1e-9)
+
+    rows = by_candidate["fixed"]
+    here = surface[column(rows, "row", int), column(rows, "column", int)]
+    worst = np.abs(np.log(here) - column(rows, "log_density")).max()
+    study.expect("fixed: surface at the units' cells, as log", worst, 0, 1e-6)
+    cells = surface[~np.isnan(surface)]
+    counts = np.zeros(surface.shape)
+    np.add.at(counts, (column(rows, "row", int), column(rows, "column", int)), 1)
+    counts = counts[~np.isnan(surface)]
+    scores = study.candidate(figures, "fixed")["scores"]
+    study.expect("fixed: AUC", scores["auc"]["value"], auc(cells, here), 1e-6)
+    study.expect("fixed: Boyce", scores["boyce"]["value"], boyce(cells, here), 5e-3)
+    study.expect("fixed: calibration", scores["calibration_slope"]["value"], slope(cells, counts), 1e-5)
+    fold = column(rows, "fold", int)
+    for line in (line for line in by_fold if line["candidate"] == "fixed" and line["fold"].isdigit()):
+        part = fold == int(line["fold"])
+        label = f"fixed, fold {line['fold']}"
+        study.expect(f"{label}: units", float(line["units"]), part.sum(), 0)
+        study.expect(f"{label}: log score", float(line["log_score"]), np.log(here[part]).mean(), 1e-6)
+        study.expect(f"{label}: AUC", float(line["auc"]), auc(cells, here[part]), 1e-6)
+    if set(fold) != {1, 2, 3, 4}:
+        sys.exit(f"folds are {sorted(set(fold))}")
+
+
+if __name__ == "__main__":
+    main()
