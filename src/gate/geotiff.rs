@@ -65,7 +65,8 @@ fn verify(path: &Path, grid: &Grid) -> Outcome<()> {
     let check = || -> gdal::errors::Result<bool> {
         let dataset = gdal::Dataset::open(path)?;
         let band = dataset.rasterband(1)?;
-        let row = band.read_as::<f32>((0, grid.rows as isize - 1), (grid.columns, 1), (grid.columns, 1), None)?;
+        let row =
+            band.read_as::<f32>((0, grid.rows as isize - 1), (grid.columns, 1), (grid.columns, 1), None)?;
         Ok(dataset.raster_size() == (grid.columns, grid.rows)
             && dataset.geo_transform()? == grid.transform
             && row.len() == grid.columns)

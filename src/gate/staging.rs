@@ -37,11 +37,18 @@ impl Staging {
     /// When the folder cannot be made or written to.
     pub fn open(target: &Path) -> Outcome<Self> {
         let refused = |e: std::io::Error| {
-            Diagnostic::output("folder_not_writable", target.display().to_string(), format!("cannot write there: {e}"))
-                .cure("give another folder with `-o`, or change its permissions")
+            Diagnostic::output(
+                "folder_not_writable",
+                target.display().to_string(),
+                format!("cannot write there: {e}"),
+            )
+            .cure("give another folder with `-o`, or change its permissions")
         };
-        let made: Vec<PathBuf> =
-            target.ancestors().take_while(|a| !a.as_os_str().is_empty() && !a.exists()).map(Path::to_owned).collect();
+        let made: Vec<PathBuf> = target
+            .ancestors()
+            .take_while(|a| !a.as_os_str().is_empty() && !a.exists())
+            .map(Path::to_owned)
+            .collect();
         fs::create_dir_all(target).map_err(refused)?;
         clear_stale(target);
         let hidden = target.join(format!("{PREFIX}{}", std::process::id()));
@@ -79,7 +86,9 @@ impl Staging {
     #[allow(clippy::disallowed_methods, reason = "this is the atomic writer")]
     pub fn commit(mut self) -> Outcome<Vec<PathBuf>> {
         for name in &self.names {
-            File::open(self.hidden.join(name)).and_then(|f| f.sync_all()).map_err(|e| self.failed(name, &e))?;
+            File::open(self.hidden.join(name))
+                .and_then(|f| f.sync_all())
+                .map_err(|e| self.failed(name, &e))?;
         }
         let mut open = OPEN.lock().unwrap_or_else(std::sync::PoisonError::into_inner);
         let mut placed = Vec::new();
@@ -120,7 +129,9 @@ fn clear_stale(target: &Path) {
     for entry in entries.flatten() {
         let name = entry.file_name().to_string_lossy().into_owned();
         let Some(process) = name.strip_prefix(PREFIX) else { continue };
-        let alive = process.parse::<u32>().is_ok_and(|p| p != std::process::id() && Path::new(&format!("/proc/{p}")).exists());
+        let alive = process
+            .parse::<u32>()
+            .is_ok_and(|p| p != std::process::id() && Path::new(&format!("/proc/{p}")).exists());
         if !alive {
             drop(fs::remove_dir_all(entry.path()));
         }

@@ -1,0 +1,282 @@
+//! The inputs of a study as files in a folder.
+
+use std::cell::RefCell;
+use std::collections::BTreeMap;
+use std::path::{Path, PathBuf};
+use std::sync::{Arc, Once};
+
+use gdal::spatial_ref::CoordTransform;
+use gdal::vector::LayerAccess;
+use gdal::{Dataset, DatasetOptions, GdalOpenFlags};
+
+use crate::diag::{Diagnostic, Observer, Outcome, Warnings};
+use crate::grid::{Grid, Region};
+use crate::proxies::{LayerPlan, Measure};
+use crate::records::{RecordsPlan, Row};
+
+use super::digest::{InputFile, digest};
+use super::scale::Wander;
+use super::sources::{GridRequest, LayerData, Peek, Sources};
+use super::{crs, features, grid_in, points, scale, table, values};
+
+/// Drivers that reach for a network.
+const NETWORK_DRIVERS: &str = "HTTP WMS WMTS WCS OGCAPI EEDA EEDAI PLMOSAIC DAAS STACIT STACTA NGW PLSCENES \
+                               WFS OAPIF CSW Elastic Carto AmigoCloud GMLAS MongoDBv3 PostgreSQL MySQL MSSQLSpatial \
+                               ODBC PGeo HANA OCI";
+
+/// Makes GDAL silent and keeps it off the network; before its first use.
+fn settle_gdal() {
+    static ONCE: Once = Once::new();
+    ONCE.call_once(|| {
+        // settings of names known to exist cannot fail; errors come back as values, not on stderr
+        drop(gdal::config::set_config_option("GDAL_SKIP", NETWORK_DRIVERS));
+        drop(gdal::config::set_config_option("OGR_INTERLEAVED_READING", "YES"));
+        drop(gdal::config::set_config_option("GDAL_PAM_ENABLED", "NO"));
+        gdal::config::set_error_handler(|_, _, _| {});
+        // SAFETY: takes a number, touches no memory of ours
+        unsafe { gdal_sys::OSRSetPROJEnableNetwork(0) };
+    });
+}
+
+/// Versions of the libraries behind the gate.
+pub fn libraries() -> String {
+    format!("GDAL {}", gdal::version::VersionInfo::release_name())
+}
+
+/// Inputs in a folder, opened as the study asks for them.
+pub struct Files {
+    folder: PathBuf,
+    opened: RefCell<Vec<String>>,
+    transforms: RefCell<BTreeMap<String, CoordTransform>>,
+    unknown_datums: RefCell<BTreeMap<String, u64>>,
+}
+
+impl Files {
+    /// Paths are relative to this folder.
+    pub fn new(folder: &Path) -> Self {
+        settle_gdal();
+        Self {
+            folder: folder.to_owned(),
+            opened: RefCell::default(),
+            transforms: RefCell::default(),
+            unknown_datums: RefCell::default(),
+        }
+    }
+
+    /// The path of a file, noted as an input; it must exist and hold something.
+    pub(super) fn path(&self, file: &str) -> Outcome<PathBuf> {
+        let path = self.folder.join(file);
+        let known = std::fs::metadata(&path).map_err(|e| {
+            let text = match e.kind() {
+                std::io::ErrorKind::NotFound => format!("no such file (looked for `{}`)", path.display()),
+                _ => format!("cannot be opened: {e}"),
+            };
+            Diagnostic::input("no_such_file", file, text)
+                .cure("paths in a plan are relative to the plan's own folder")
+        })?;
+        if known.is_file() && known.len() == 0 {
+            return Err(Diagnostic::input("empty_file", file, "the file is empty")
+                .cure("give the real one")
+                .into());
+        }
+        if !self.opened.borrow().iter().any(|o| o == file) {
+            self.opened.borrow_mut().push(file.to_owned());
+        }
+        no_network(&path, file)?;
+        Ok(path)
+    }
+
+    /// Opens a raster.
+    pub(super) fn raster(&self, file: &str) -> Outcome<Dataset> {
+        self.open(file, GdalOpenFlags::GDAL_OF_RASTER, "not_a_raster", "no raster that can be read")
+    }
+
+    /// Opens a vector file.
+    pub(super) fn vector(&self, file: &str) -> Outcome<Dataset> {
+        self.open(file, GdalOpenFlags::GDAL_OF_VECTOR, "not_a_vector", "no vector file that can be read")
+    }
+
+    fn open(&self, file: &str, flags: GdalOpenFlags, rule: &'static str, what: &str) -> Outcome<Dataset> {
+        let path = self.path(file)?;
+        let options = DatasetOptions { open_flags: flags, ..DatasetOptions::default() };
+        Dataset::open_ex(&path, options).map_err(|e| {
+            Diagnostic::input(rule, file, format!("is {what} ({e})"))
+                .cure("check the path, and that the file is whole")
+                .into()
+        })
+    }
+
+    /// Every input opened so far, with its fingerprint; a shapefile's companions count as inputs.
+    pub fn inputs(&self) -> Vec<InputFile> {
+        let mut names: Vec<String> = Vec::new();
+        for file in self.opened.borrow().iter() {
+            names.push(file.clone());
+            let path = Path::new(file);
+            if path.extension().is_some_and(|e| e.eq_ignore_ascii_case("shp")) {
+                names.extend(
+                    ["dbf", "shx", "prj", "cpg"].map(|e| path.with_extension(e).display().to_string()),
+                );
+            }
+        }
+        names.iter().filter_map(|n| digest(&self.folder.join(n), n)).collect()
+    }
+}
+
+/// A virtual raster or vector that refers to a network is refused.
+fn no_network(path: &Path, file: &str) -> Outcome<()> {
+    let virtual_file =
+        path.extension().is_some_and(|e| ["vrt", "ovrt"].iter().any(|v| e.eq_ignore_ascii_case(v)));
+    if !virtual_file {
+        return Ok(());
+    }
+    let text = std::fs::read_to_string(path).unwrap_or_default().to_lowercase();
+    let remote = [
+        "/vsicurl",
+        "/vsis3",
+        "/vsigs",
+        "/vsiaz",
+        "/vsiadls",
+        "/vsioss",
+        "/vsiswift",
+        "/vsihdfs",
+        "/vsiwebhdfs",
+        "http:",
+        "https:",
+        "ftp:",
+        "pg:",
+        "postgresql:",
+        "mysql:",
+        "<gdal_wms",
+    ];
+    match remote.iter().find(|r| text.contains(**r)) {
+        None => Ok(()),
+        Some(found) => {
+            Err(Diagnostic::input("remote_path", file, format!("refers to a network (`{found}`)"))
+                .cure("download what it refers to; no command opens a network connection")
+                .into())
+        }
+    }
+}
+
+impl Sources for Files {
+    fn grid(&self, request: GridRequest) -> Outcome<Grid> {
+        grid_in::grid(self, request)
+    }
+
+    fn region(&self, request: GridRequest, grid: Grid) -> Outcome<Region> {
+        grid_in::region(self, request, grid)
+    }
+
+    fn wander(&self, region: &Region) -> Outcome<Option<Wander>> {
+        scale::wander(region)
+    }
+
+    fn layer(&self, plan: &LayerPlan, region: &Arc<Region>, warnings: &mut Warnings) -> Outcome<LayerData> {
+        match plan.measure {
+            Measure::Distance => Ok(LayerData::Features(features::read(self, plan, region, warnings)?)),
+            Measure::Value => {
+                let (values, unit) = values::read(self, plan, region, warnings)?;
+                Ok(LayerData::Values(values, unit))
+            }
+        }
+    }
+
+    fn records(
+        &self,
+        plan: &RecordsPlan,
+        each: &mut dyn FnMut(&Row) -> Outcome<()>,
+        observer: &dyn Observer,
+    ) -> Outcome<()> {
+        for (index, file) in plan.files.iter().enumerate() {
+            let path = self.path(file)?;
+            if table::is_text(&path) {
+                table::read(&path, (file, index), plan, each, observer)?;
+            } else {
+                points::read(self, (file, index), plan, each, observer)?;
+            }
+        }
+        Ok(())
+    }
+
+    fn project(&self, from: &str, grid: &Grid, x: &mut [f64], y: &mut [f64]) -> Outcome<()> {
+        let key = format!("{from}\n{}", grid.crs.wkt);
+        let mut known = self.transforms.borrow_mut();
+        if !known.contains_key(&key) {
+            let (source, target) = (crs::parse(from, "[records] crs")?, crs::parse(&grid.crs.wkt, "grid")?);
+            let made = crs::transform(&source, &target)
+                .ok_or_else(|| features::no_way("[records] crs", &grid.crs.label))?;
+            known.insert(key.clone(), made);
+        }
+        crs::turn(&known[&key], x, y);
+        Ok(())
+    }
+
+    fn datum<'a>(&self, datum: &'a str, plan: &'a str, records: usize) -> &'a str {
+        if datum.is_empty()
+            || datum.starts_with("GEOGCRS[")
+            || datum.starts_with("PROJCRS[")
+            || datum.contains('[')
+        {
+            return if datum.is_empty() { plan } else { datum };
+        }
+        if let Some(known) = crs::transformer_label(datum) {
+            return known;
+        }
+        let code = datum.to_ascii_uppercase().replace(' ', "");
+        if code.starts_with("EPSG:")
+            && gdal::spatial_ref::SpatialRef::from_definition(&code).is_ok_and(|s| s.is_geographic())
+        {
+            return datum;
+        }
+        *self.unknown_datums.borrow_mut().entry(datum.to_owned()).or_insert(0) += records as u64;
+        plan
+    }
+
+    fn remarks(&self) -> Vec<Diagnostic> {
+        let unknown = self.unknown_datums.borrow();
+        unknown
+            .iter()
+            .map(|(datum, records)| {
+                let text = format!(
+                    "{records} records name the datum `{datum}`, which is not known: read as the plan's `crs`"
+                );
+                Diagnostic::input("unknown_datum", "geodeticDatum", text)
+                    .cure("write datums as EPSG codes, such as EPSG:4326")
+            })
+            .collect()
+    }
+
+    fn degrees(&self, definition: &str) -> Outcome<bool> {
+        Ok(crs::parse(definition, "[records] crs")?.is_geographic())
+    }
+
+    fn peek(&self, file: &str, wanted: Option<&str>) -> Outcome<Peek> {
+        let path = self.path(file)?;
+        if table::is_text(&path) {
+            return Ok(Peek {
+                file: file.into(),
+                kind: "text",
+                crs: String::new(),
+                extent: None,
+                count: None,
+            });
+        }
+        if let Ok(raster) = self.raster(file)
+            && raster.raster_count() > 0
+        {
+            let grid = grid_in::like(&raster, file)?;
+            return Ok(Peek {
+                file: file.into(),
+                kind: "raster",
+                crs: grid.crs.label.clone(),
+                extent: Some(grid.extent()),
+                count: Some(grid.len() as u64),
+            });
+        }
+        let dataset = self.vector(file)?;
+        let layer = features::open_layer(&dataset, file, wanted)?;
+        let crs = layer.spatial_ref().and_then(|s| crs::describe(&s)).map(|c| c.label).unwrap_or_default();
+        let extent = layer.get_extent().ok().map(|e| [e.MinX, e.MinY, e.MaxX, e.MaxY]);
+        Ok(Peek { file: file.into(), kind: "vector", crs, extent, count: layer.try_feature_count() })
+    }
+}
