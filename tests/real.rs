@@ -18,9 +18,26 @@ use serde_json::Value;
 
 /// Ways on which people walk or drive, as the map tags them.
 const WAYS: [&str; 20] = [
-    "motorway", "trunk", "primary", "secondary", "tertiary", "motorway_link", "trunk_link", "primary_link",
-    "secondary_link", "tertiary_link", "unclassified", "residential", "living_street", "service",
-    "pedestrian", "footway", "path", "track", "steps", "cycleway",
+    "motorway",
+    "trunk",
+    "primary",
+    "secondary",
+    "tertiary",
+    "motorway_link",
+    "trunk_link",
+    "primary_link",
+    "secondary_link",
+    "tertiary_link",
+    "unclassified",
+    "residential",
+    "living_street",
+    "service",
+    "pedestrian",
+    "footway",
+    "path",
+    "track",
+    "steps",
+    "cycleway",
 ];
 
 /// The folder of prepared data; `None`, said aloud, where it cannot be had.
@@ -101,7 +118,10 @@ fn every_row_is_accounted_for() {
     let found = world.run(&["build", "plan.toml", "--json"]).ended(0).json();
     assert_eq!(found, json(&world.path("out/effort.json")));
     let grid = &found["grid"];
-    assert_eq!((count(grid, "columns"), count(grid, "rows"), count(grid, "cells_inside")), (300, 350, 23_375));
+    assert_eq!(
+        (count(grid, "columns"), count(grid, "rows"), count(grid, "cells_inside")),
+        (300, 350, 23_375)
+    );
     close(grid["area_km2"].as_f64().unwrap(), 2.3375, 1e-9);
     assert_eq!(grid["transform"], serde_json::json!([371800.0, 10.0, 0.0, 4846000.0, 0.0, -10.0]));
     let records = &found["records"];
@@ -160,18 +180,24 @@ fn records_and_visits_tell_different_stories() {
         assert_eq!((count(&found["records"], "kept"), count(&found["records"], "places")), (3_264, 467));
     }
     close(by_record["records"]["units"].as_f64().unwrap(), 3_264.0, 0.0);
-    let outings = by_visit["records"]["units"].as_f64().unwrap();
-    assert!((467.0..1_000.0).contains(&outings), "{outings} visits");
+    // 836 pairs of observer and date by cell as they are written; the same names in another order,
+    // or the same day written in another way, are one
+    let visits_made = by_visit["records"]["units"].as_f64().unwrap();
+    assert!((800.0..=836.0).contains(&visits_made), "{visits_made} visits");
     let top = |found: &Value| found["records"]["top_share"]["cell"].as_f64().unwrap();
     close(top(&by_record), 1_023.0 / 3_264.0, 1e-3);
-    assert!(top(&by_visit) < 0.1, "one cell has {} of the visits", top(&by_visit));
+    assert!(top(&by_visit) < 0.16, "one cell has {} of the visits", top(&by_visit));
     let (a, b) = (records.inside(), visits.inside());
     close(a.iter().sum(), 1.0, 1e-5);
     close(b.iter().sum(), 1.0, 1e-5);
     // half the summed differences: the share of background points that would move
     let moved = a.iter().zip(&b).map(|(a, b)| (a - b).abs()).sum::<f64>() / 2.0;
     println!("{:.0} % of the weight moves when visits are counted instead of records", 100.0 * moved);
-    assert!(moved > 0.25, "only {moved} of the weight moves");
+    assert!(moved > 0.15, "only {moved} of the weight moves");
+    // the largest cell by a direct sum over records at cell centres, renormalised over land, floor 1 %
+    let largest = |values: &[f64]| values.iter().copied().fold(0.0, f64::max);
+    close(largest(&a), 6.395_4e-4, 6e-6);
+    close(largest(&b), 4.142_8e-4, 8e-6);
 }
 
 #[test]

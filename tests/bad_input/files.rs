@@ -17,7 +17,11 @@ fn no_such_file() {
 #[test]
 fn every_missing_file_is_named_at_once() {
     let world = World::new();
-    world.change(&[("records.tsv", "absent.tsv"), ("roads.geojson", "gone.gpkg"), ("people.tif", "lost.tif")]);
+    world.change(&[
+        ("records.tsv", "absent.tsv"),
+        ("roads.geojson", "gone.gpkg"),
+        ("people.tif", "lost.tif"),
+    ]);
     let checked = world.run(&["check", "plan.toml", "--json"]).ended(3);
     super::says(&checked.stdout, &["absent.tsv", "gone.gpkg", "lost.tif"]);
 }
@@ -64,9 +68,12 @@ fn a_folder_in_place_of_a_file() {
 
 #[test]
 fn empty_file() {
-    for (named, empty) in
-        [("land.tif", "e.tif"), ("records.tsv", "e.tsv"), ("roads.geojson", "e.geojson"), ("people.tif", "e2.tif")]
-    {
+    for (named, empty) in [
+        ("land.tif", "e.tif"),
+        ("records.tsv", "e.tsv"),
+        ("roads.geojson", "e.geojson"),
+        ("people.tif", "e2.tif"),
+    ] {
         let world = World::new();
         world.put(empty, "");
         world.change(&[(named, empty)]);

@@ -45,7 +45,10 @@ fn a_region_without_polygons() {
 #[test]
 fn unknown_crs() {
     let world = World::new();
-    world.change(&[("like = \"land.tif\"", "region = \"land.tif\"\ncrs = \"EPSG:99999\"\ncell = \"100 m\"")]);
+    let (x, y) = (500_000.0, 4_998_000.0);
+    world.put("region.geojson", &polygon(32632, &[(x, y), (x + 900.0, y), (x + 900.0, y + 900.0), (x, y)]));
+    let to = "region = \"region.geojson\"\ncrs = \"EPSG:99999\"\ncell = \"100 m\"";
+    world.change(&[("like = \"land.tif\"", to)]);
     refused(&world, 2, &["EPSG:99999", "crs"]);
 }
 

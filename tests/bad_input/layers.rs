@@ -57,7 +57,9 @@ fn infinity() {
             let world = with_people(value, 4);
             let to = format!("resample = \"{resample}\"\nmissing = 0");
             world.change(&[("resample = \"sum\"", &to)]);
-            refused_by_build(&world, 3, &["people.tif", "infinit|not finite"]);
+            // a total of less than nothing is refused as negative
+            let fault = if value < 0.0 { "infinit|not finite|negative" } else { "infinit|not finite" };
+            refused_by_build(&world, 3, &["people.tif", fault]);
         }
     }
 }
@@ -80,7 +82,7 @@ fn negative_population_under_a_power_curve() {
 #[test]
 fn negative_population_to_be_summed() {
     let world = with_people(-9999.0, 2);
-    refused_by_build(&world, 3, &["people.tif", "-9999", "negative|below zero", "nodata"]);
+    refused_by_build(&world, 3, &["people.tif", "2 ", "negative|below zero", "nodata"]);
 }
 
 #[test]

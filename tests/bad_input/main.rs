@@ -69,7 +69,6 @@ fn the_small_world_itself_is_fine() {
     let quiet = world.run(&["build", "plan.toml", "--quiet"]).ended(0);
     assert_eq!(quiet.stderr, "");
     let names: Vec<String> = world.files("out").into_keys().collect();
-    let due =
-        ["dropped.csv", "effort.json", "effort.tif", "held-out.csv", "manifest.json", "report.html"];
+    let due = ["dropped.csv", "effort.json", "effort.tif", "held-out.csv", "manifest.json", "report.html"];
     assert_eq!(names, due);
 }

@@ -48,7 +48,7 @@ fn check_says_how_much_a_build_needs() {
 fn sizes_need_a_unit() {
     let world = World::new();
     for size in ["64", "64 furlongs", "-1 GiB", "much"] {
-        let ran = world.run(&["build", "plan.toml", "--memory", size]).ended(2);
+        let ran = world.run(&["build", "plan.toml", &format!("--memory={size}")]).ended(2);
         super::says(&ran.stderr, &["memory", "gib|mib"]);
     }
 }

@@ -39,12 +39,16 @@ fn wrong_type() {
 
 #[test]
 fn two_candidates_of_one_name() {
-    wrong("name = \"access\"", "name = \"recorded\"", &["plan.toml:", "recorded", "twice|two|already|both"]);
+    wrong(
+        "name = \"access\"",
+        "name = \"recorded\"",
+        &["plan.toml:", "recorded", "twice|two|already|both|taken"],
+    );
 }
 
 #[test]
 fn two_layers_of_one_name() {
-    wrong("name = \"people\"", "name = \"roads\"", &["plan.toml:", "roads", "twice|two|already|both"]);
+    wrong("name = \"people\"", "name = \"roads\"", &["plan.toml:", "roads", "twice|two|already|both|taken"]);
 }
 
 #[test]
@@ -87,7 +91,7 @@ fn a_remote_path_inside_a_virtual_file() {
          <SourceBand>1</SourceBand></SimpleSource></VRTRasterBand></VRTDataset>",
     );
     world.change(&[("people.tif", "people.vrt")]);
-    refused(&world, 3, &["people.vrt", "data.invalid", "network|download|remote"]);
+    refused(&world, 3, &["people.vrt", "data.invalid|vsicurl", "network|download|remote"]);
     world.put(
         "roads.vrt",
         "<OGRVRTDataSource><OGRVRTLayer name=\"roads\">\
@@ -95,7 +99,7 @@ fn a_remote_path_inside_a_virtual_file() {
          </OGRVRTLayer></OGRVRTDataSource>",
     );
     world.change(&[("roads.geojson", "roads.vrt")]);
-    refused(&world, 3, &["roads.vrt", "data.invalid", "network|download|remote"]);
+    refused(&world, 3, &["roads.vrt", "data.invalid|vsicurl", "network|download|remote"]);
 }
 
 #[test]

@@ -101,7 +101,9 @@ fn no_record_left_prints_the_ledger() {
 fn one_record() {
     let world = World::new();
     world.put_records("records.tsv", &world.points(1));
-    refused(&world, 3, &["1 |one|single", "folds|hold out|held out"]);
+    refused(&world, 3, &["records.tsv|holdout", "1 |one|single", "folds|hold out|held out"]);
+    let said = world.run(&["build", "plan.toml"]).stderr;
+    assert!(!said.contains("2 or fewer"), "no number of folds helps a single record: {said}");
 }
 
 #[test]

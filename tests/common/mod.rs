@@ -145,7 +145,13 @@ impl World {
 
     /// The grid: 40 × 30 cells of 100 m.
     pub fn lattice(&self) -> Lattice {
-        Lattice { columns: 40, rows: 30, origin: (500_000.0, 5_000_000.0), cell: (100.0, -100.0), epsg: self.epsg }
+        Lattice {
+            columns: 40,
+            rows: 30,
+            origin: (500_000.0, 5_000_000.0),
+            cell: (100.0, -100.0),
+            epsg: self.epsg,
+        }
     }
 
     /// Where a file of this name is.

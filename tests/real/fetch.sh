@@ -47,8 +47,9 @@ $streets_sum  $streets_archive")
 
 fetch() {
     local log="$folder/download.log"
-    python3 -m pip download --disable-pip-version-check --no-deps --no-binary :all: \
-        --dest "$folder" "polars-darwin-core==4.0.0" "quackosm==0.19.0" >"$log" 2>&1 || {
+    python3 -m pip download --disable-pip-version-check --timeout 20 --retries 2 --no-deps \
+        --no-binary polars-darwin-core,quackosm --dest "$folder" \
+        "polars-darwin-core==4.0.0" "quackosm==0.19.0" >"$log" 2>&1 || {
         tail -n 5 "$log" >&2
         echo "the archives cannot be downloaded" >&2
         exit 75

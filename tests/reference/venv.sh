@@ -19,7 +19,7 @@ python3 -m venv "$folder" >"$folder.log" 2>&1 || {
     echo "python3 cannot make an environment here" >&2
     exit 69
 }
-"$folder/bin/python" -m pip install --disable-pip-version-check --only-binary :all: \
+"$folder/bin/python" -m pip install --disable-pip-version-check --timeout 20 --retries 2 --only-binary :all: \
     --requirement "$here/requirements.txt" >"$folder.log" 2>&1 || {
     tail -n 3 "$folder.log" >&2
     echo "the libraries cannot be installed" >&2
