@@ -96,44 +96,73 @@ def slope(density, counts):
     return fit.params[1]
 
 
-def main():
-    with tempfile.TemporaryDirectory() as folder:
-        world(folder)
-        figures = study.run(folder, PLAN)
-        by_candidate = held_out(folder)
-        surface = study.read(folder, "surface-fixed.tif")
-        with open(os.path.join(folder, "out", "held-out.csv"), encoding="utf-8", newline="") as source:
-            by_fold = list(csv.DictReader(source))
-
+def whole(what, figures, by_candidate):
+    """Every unit is held out once, and the log score is the mean of what the units say."""
     for name, rows in by_candidate.items():
-        scores = study.candidate(figures, name)["scores"]
         if len(set(column(rows, "unit", int))) != len(rows):
-            sys.exit(f"{name}: a unit is held out twice")
-        study.expect(f"{name}: units held out", weight(rows).sum(), figures["records"]["units"], 0)
+            sys.exit(f"{what}, {name}: a unit is held out twice")
+        study.expect(f"{what}, {name}: units held out", weight(rows).sum(), figures["records"]["units"], 0)
         due = np.average(column(rows, "log_density"), weights=weight(rows))
-        study.expect(f"{name}: mean of the units' log density", scores["log_score"]["value"], due, 1e-9)
+        found = study.candidate(figures, name)["scores"]["log_score"]["value"]
+        study.expect(f"{what}, {name}: log score", found, due, 1e-9)
 
-    rows = by_candidate["fixed"]
-    here = surface[column(rows, "row", int), column(rows, "column", int)]
-    worst = np.abs(np.log(here) - column(rows, "log_density")).max()
-    study.expect("fixed: surface at the units' cells, as log", worst, 0, 1e-6)
-    cells = surface[~np.isnan(surface)]
+
+def pooled(what, figures, rows, surface):
+    """AUC, Boyce index and calibration of the fixed candidate over all units."""
+    at = column(rows, "row", int), column(rows, "column", int)
+    worst = np.abs(np.log(surface[at]) - column(rows, "log_density")).max()
+    study.expect(f"{what}: surface at the units' cells, as log", worst, 0, 1e-6)
     counts = np.zeros(surface.shape)
-    np.add.at(counts, (column(rows, "row", int), column(rows, "column", int)), weight(rows))
-    counts = counts[~np.isnan(surface)]
+    np.add.at(counts, at, weight(rows))
+    land = ~np.isnan(surface)
     scores = study.candidate(figures, "fixed")["scores"]
-    study.expect("fixed: AUC", scores["auc"]["value"], auc(cells, here, weight(rows)), 1e-6)
-    study.expect("fixed: Boyce", scores["boyce"]["value"], boyce(cells, here, weight(rows)), 5e-3)
-    study.expect("fixed: calibration", scores["calibration_slope"]["value"], slope(cells, counts), 1e-5)
+    study.expect(f"{what}: AUC", scores["auc"]["value"], auc(surface[land], surface[at], weight(rows)), 1e-6)
+    study.expect(f"{what}: Boyce", scores["boyce"]["value"], boyce(surface[land], surface[at], weight(rows)), 5e-3)
+    due = slope(surface[land], counts[land])
+    study.expect(f"{what}: calibration", scores["calibration_slope"]["value"], due, 1e-5)
+
+
+def folds(what, by_fold, rows, surface):
+    """The fixed candidate's figures by fold."""
+    at = surface[column(rows, "row", int), column(rows, "column", int)]
     fold = column(rows, "fold", int)
+    if set(fold) != {1, 2, 3, 4}:
+        sys.exit(f"{what}: folds are {sorted(set(fold))}")
     for line in (line for line in by_fold if line["candidate"] == "fixed" and line["fold"].isdigit()):
         part = fold == int(line["fold"])
-        label = f"fixed, fold {line['fold']}"
-        study.expect(f"{label}: units", float(line["units"]), weight(rows)[part].sum(), 0)
-        study.expect(f"{label}: log score", float(line["log_score"]), np.average(np.log(here[part]), weights=weight(rows)[part]), 1e-6)
-        study.expect(f"{label}: AUC", float(line["auc"]), auc(cells, here[part], weight(rows)[part]), 1e-6)
-    if set(fold) != {1, 2, 3, 4}:
-        sys.exit(f"folds are {sorted(set(fold))}")
+        label, w = f"{what}, fold {line['fold']}", weight(rows)[part]
+        study.expect(f"{label}: units", float(line["units"]), w.sum(), 0)
+        study.expect(f"{label}: log score", float(line["log_score"]), np.average(np.log(at[part]), weights=w), 1e-6)
+        due = auc(surface[~np.isnan(surface)], at[part], w)
+        study.expect(f"{label}: AUC", float(line["auc"]), due, 1e-6)
+
+
+def check(what, plan):
+    """Works all scores of a plan out again."""
+    with tempfile.TemporaryDirectory() as folder:
+        world(folder)
+        figures = study.run(folder, plan)
+        by_candidate = held_out(folder)
+        surface = study.read(folder, "surface-fixed.tif")
+        blocks = study.read(folder, "folds.tif")
+        with open(os.path.join(folder, "out", "held-out.csv"), encoding="utf-8", newline="") as source:
+            by_fold = list(csv.DictReader(source))
+    rows = by_candidate["fixed"]
+    whole(what, figures, by_candidate)
+    pooled(what, figures, rows, surface)
+    folds(what, by_fold, rows, surface)
+    if what == "blocks":
+        of_cell = blocks[column(rows, "row", int), column(rows, "column", int)]
+        study.expect("blocks: units in another fold than their cell", (of_cell != column(rows, "fold")).sum(), 0, 0)
+
+
+def main():
+    visits = PLAN.replace('count = "records"', 'count = "visits"\nobserver = "who"')
+    check("visits", visits)
+    # without an even share, whose size would depend on the cells observed
+    blocks = visits.replace('split = "random"', 'split = "blocks"\nblock = "900 m"')
+    check("blocks", blocks.replace("base = 0.2", "base = 0"))
+    check("records", PLAN)
 
 
 if __name__ == "__main__":

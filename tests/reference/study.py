@@ -30,10 +30,10 @@ def read(folder, name):
 
 
 def points(folder, x, y, name="records.tsv"):
-    """Writes records with projected coordinates."""
+    """Writes records with projected coordinates, each by an observer of its own."""
     with open(os.path.join(folder, name), "w", encoding="utf-8") as target:
-        target.write("x\ty\n")
-        target.writelines(f"{float(a)!r}\t{float(b)!r}\n" for a, b in zip(x, y))
+        target.write("x\ty\twho\n")
+        target.writelines(f"{float(a)!r}\t{float(b)!r}\tobserver {i}\n" for i, (a, b) in enumerate(zip(x, y)))
 
 
 def line(folder, name, ends, crs=CRS):
