@@ -129,7 +129,7 @@ fn a_quota_on_file_sizes() {
 /// A finer grid under the same plan, in `slow.toml`: seconds of work.
 fn slow(world: &World) {
     let mut grid = world.lattice();
-    (grid.columns, grid.rows, grid.cell) = (800, 600, (5.0, -5.0));
+    (grid.columns, grid.rows, grid.cell) = (500, 375, (8.0, -8.0));
     raster::write(&world.path("fine.tif"), &grid, &grid.filled(1.0), None);
     world.put_records("many.tsv", &world.points(20_000));
     world.change(&[
@@ -163,7 +163,7 @@ fn killed_in_the_middle() {
     world.run(&["build", "plan.toml"]).ended(0);
     let before = world.files("out");
     let mut after = Vec::new();
-    for longest in [30, 300, 1_000, 60_000] {
+    for longest in [30, 200, 600, 60_000] {
         let mut child = start(&world);
         until_it_writes(&world, &mut child, Duration::from_millis(longest));
         child.kill().expect("it can be killed");
@@ -196,7 +196,7 @@ fn stopped(world: &World, signal: &str, longest: u64) -> Ran {
 fn interrupted() {
     let world = World::new();
     slow(&world);
-    for longest in [400, 900, 60_000] {
+    for longest in [300, 600, 60_000] {
         let ran = stopped(&world, "INT", longest);
         assert_eq!(ran.code, Some(130), "{}", ran.stderr);
         assert_eq!(ran.stdout, "");
@@ -205,7 +205,7 @@ fn interrupted() {
     }
     world.run(&["build", "plan.toml"]).ended(0);
     let before = world.files("");
-    for longest in [400, 900, 60_000] {
+    for longest in [300, 600, 60_000] {
         assert_eq!(stopped(&world, "INT", longest).code, Some(130));
         unchanged(&before, &world.files(""));
     }
