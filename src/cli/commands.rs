@@ -71,7 +71,11 @@ impl Sink for Nowhere {
 
 /// `trodden check`.
 pub fn check(args: &CheckArgs, common: &Common, voice: Voice) -> Outcome<()> {
-    let opened = open(&args.plan)?;
+    let opened = open(&args.plan).inspect_err(|problems| {
+        if common.json {
+            result(&pretty(&check_json(&Checked { problems: problems.0.clone(), ..Checked::default() })));
+        }
+    })?;
     let plan = &opened.plan;
     let files = Files::new(&opened.folder);
     let bars = Bars::new(voice.shows_progress());

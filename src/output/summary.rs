@@ -206,6 +206,7 @@ pub struct CheckedInput {
 }
 
 /// What `check` found.
+#[derive(Default)]
 pub struct Checked {
     /// The grid, where it could be read, with its cells inside.
     pub grid: Option<(Grid, Option<usize>)>,
