@@ -1,5 +1,7 @@
 //! Writes rasters as GeoTIFF in the cloud-optimised layout (OGC 21-026).
 
+use std::fs::File;
+use std::io::Write;
 use std::path::Path;
 
 use gdal::cpl::CslStringList;
@@ -32,7 +34,7 @@ pub struct Band<'a> {
 /// # Errors
 /// When the file cannot be written.
 pub fn write(path: &Path, grid: &Grid, band: Band) -> Outcome<()> {
-    let refused = |e: gdal::errors::GdalError| failed(path, &e.to_string());
+    let refused = |e: gdal::errors::GdalError| failed(path, &reason(path, &e));
     let memory = DriverManager::get_driver_by_name("MEM").map_err(refused)?;
     let mut dataset =
         memory.create_with_band_type::<f32, _>("", grid.columns, grid.rows, 1).map_err(refused)?;
@@ -74,7 +76,23 @@ fn verify(path: &Path, grid: &Grid) -> Outcome<()> {
     match check() {
         Ok(true) => Ok(()),
         Ok(false) => Err(failed(path, "it does not read back as written").into()),
-        Err(e) => Err(failed(path, &format!("it does not read back: {e}")).into()),
+        Err(e) => Err(failed(path, &format!("it does not read back: {}", reason(path, &e))).into()),
+    }
+}
+
+/// Why a file could not be written, as the system puts it where the system is to blame: a few
+/// megabytes written beside it meet the same full disk or quota.
+fn reason(path: &Path, error: &gdal::errors::GdalError) -> String {
+    let probe = path.with_extension("probe");
+    let written =
+        File::create(&probe).and_then(|mut f| f.write_all(&vec![1; 8 << 20]).and_then(|()| f.sync_all()));
+    drop(std::fs::remove_file(&probe));
+    match written {
+        Err(e) => e.to_string(),
+        Ok(()) => {
+            let hidden = path.parent().map(|p| format!("{}/", p.display())).unwrap_or_default();
+            error.to_string().replace(&hidden, "")
+        }
     }
 }
 

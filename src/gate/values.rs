@@ -113,7 +113,7 @@ fn shared_out(
     let mut sums = Sums { grid, totals: vec![f64::NAN; grid.len()] };
     let band = dataset.rasterband(1).map_err(|e| unreadable(file, &e))?;
     let sharing = if from == to { Sharing::Overlap } else { Sharing::parts(source, grid, &from, &to, file)? };
-    let (mut all, mut negative) = (0.0, 0_usize);
+    let (mut all, mut negative, mut least) = (0.0, 0_usize, 0.0_f64);
     for row in 0..source.rows {
         let line = band
             .read_as::<f64>((0, row as isize), (source.columns, 1), (source.columns, 1), None)
@@ -123,11 +123,14 @@ fn shared_out(
             .map(|c| (c, line.data()[c]))
             .collect();
         negative += line.iter().filter(|(_, v)| *v < 0.0).count();
+        least = line.iter().fold(least, |l, (_, v)| l.min(*v));
         all += line.iter().map(|(_, v)| v).sum::<f64>();
         sharing.row(source, row, &line, &mut sums);
     }
     if negative > 0 {
-        let text = format!("{negative} cells are negative, which a total to be shared out cannot be");
+        let text = format!(
+            "{negative} cells are negative (smallest {least}), which a total to be shared out cannot be"
+        );
         return Err(Diagnostic::input("negative_value", format!("{file}, band 1"), text)
             .cure("mend the raster (is a nodata value undeclared?), or use another `resample`")
             .into());

@@ -2,8 +2,8 @@
 //!
 //! # Formula
 //! Effort per unit of area f = (1 − base)·G/mean(G) + base, G = Π g_k(layer_k); the likelihood of
-//! the units given their number is Σ wᵢ ln f(cellᵢ), means weighted by observed area, so that what
-//! is available enters with its own distances and values. Solved by Levenberg–Marquardt steps on
+//! the units given their number is Σ wᵢ ln [f(cellᵢ) / mean of f over the observed area], so that what
+//! is available enters with its own distances and values; mean(G) is over the whole region. Solved by Levenberg–Marquardt steps on
 //! the outer product of scores, within bounds. Intervals are from block-wise sandwich variances: the
 //! records of one block may depend on each other as they like.
 //!
@@ -55,10 +55,7 @@ pub(super) fn fit(
     let model = Model::new(asked, training, layers)?;
     let sample: Vec<u32> = {
         let stride = training.region().len().div_ceil(SAMPLE);
-        (0..training.region().len() as u32)
-            .step_by(stride)
-            .filter(|c| model.exposure[*c as usize] > 0.0)
-            .collect()
+        (0..training.region().len() as u32).step_by(stride).collect()
     };
     let best = STARTS
         .iter()
@@ -110,10 +107,33 @@ struct Found {
     converged: bool,
 }
 
-/// Area-weighted mean of G and its derivatives over the mean.
-struct Moments {
-    mean: f64,
+/// Mean of G over an area, and of its derivatives over the mean.
+#[derive(Clone)]
+struct Mean {
+    value: f64,
     slopes: Vec<f64>,
+}
+
+/// Means over the region, which the base share is measured against, and over its observed part, in
+/// which units could be.
+struct Moments {
+    region: Mean,
+    observed: Mean,
+}
+
+impl Moments {
+    /// Mean of f over the observed part, and derivatives of its logarithm into `slopes`.
+    fn level(&self, base: f64, slopes: &mut [f64; MOST]) -> f64 {
+        let ratio = self.observed.value / self.region.value;
+        let level = (1.0 - base) * ratio + base;
+        let part = (1.0 - base) * ratio / level;
+        let width = self.region.slopes.len();
+        for k in 0..width {
+            slopes[k] = part * (self.observed.slopes[k] - self.region.slopes[k]);
+        }
+        slopes[width] = (1.0 - ratio) / level;
+        level
+    }
 }
 
 struct Model<'a> {
@@ -203,10 +223,18 @@ impl<'a> Model<'a> {
     }
 
     fn moments(&self, ready: &[[f64; 4]], cells: &Cells) -> Moments {
+        let areas = self.training.region().areas();
+        let region = self.mean(ready, cells, areas);
+        let observed =
+            if self.training.whole() { region.clone() } else { self.mean(ready, cells, &self.exposure) };
+        Moments { region, observed }
+    }
+
+    fn mean(&self, ready: &[[f64; 4]], cells: &Cells, areas: &[f64]) -> Mean {
         let width = self.width() - 1;
         let totals = par_totals(cells.len(), width + 2, |i, sums| {
             let cell = cells.at(i);
-            let area = self.exposure[cell];
+            let area = areas[cell];
             if area > 0.0 {
                 let mut slopes = [0.0; MOST];
                 let g = area * self.product(cell, ready, &mut slopes);
@@ -216,22 +244,25 @@ impl<'a> Model<'a> {
             }
         });
         let mass = totals[1].max(f64::MIN_POSITIVE);
-        Moments { mean: mass / totals[0], slopes: totals[2..].iter().map(|s| s / mass).collect() }
+        Mean { value: mass / totals[0], slopes: totals[2..].iter().map(|s| s / mass).collect() }
     }
 
-    /// f in a cell, and derivatives of its logarithm by all parameters into `scores`.
+    /// f in a cell over its mean in the observed part, and derivatives of its logarithm by all
+    /// parameters into `scores`.
     fn score(&self, cell: usize, base: f64, state: (&[[f64; 4]], &Moments), scores: &mut [f64; MOST]) -> f64 {
         let (ready, moments) = state;
         let mut slopes = [0.0; MOST];
-        let relative = self.product(cell, ready, &mut slopes) / moments.mean;
+        let relative = self.product(cell, ready, &mut slopes) / moments.region.value;
         let f = ((1.0 - base) * relative + base).max(1e-300);
         let part = (1.0 - base) * relative / f;
-        let width = moments.slopes.len();
+        let mut level_slopes = [0.0; MOST];
+        let level = moments.level(base, &mut level_slopes);
+        let width = moments.region.slopes.len();
         for k in 0..width {
-            scores[k] = part * (slopes[k] - moments.slopes[k]);
+            scores[k] = part * (slopes[k] - moments.region.slopes[k]) - level_slopes[k];
         }
-        scores[width] = (1.0 - relative) / f;
-        f
+        scores[width] = (1.0 - relative) / f - level_slopes[width];
+        f / level
     }
 
     /// Log likelihood per unit, its gradient and the mean outer product of scores.
@@ -302,7 +333,7 @@ impl<'a> Model<'a> {
             .with_min_len(4096)
             .map(|cell| {
                 let mut slopes = [0.0; MOST];
-                (1.0 - base) * self.product(cell, &ready, &mut slopes) / moments.mean + base
+                (1.0 - base) * self.product(cell, &ready, &mut slopes) / moments.region.value + base
             })
             .collect()
     }

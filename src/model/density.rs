@@ -8,6 +8,8 @@
 //! Jones, M. C. (1993), Simple boundary correction for kernel density estimation, Statistics and
 //! Computing 3, 135–146; Diggle, P. J. (2010), in Handbook of Spatial Statistics, eq. 18.9.
 
+use std::collections::BTreeMap;
+
 use crate::diag::{Diagnostic, Outcome};
 use crate::maths::float;
 use crate::maths::optimise::{End, Search, maximise};
@@ -118,6 +120,35 @@ fn curve(found: &Search) -> Evidence {
 /// Density over uniform and support of every cell at a bandwidth in metres.
 fn surface(training: &Training, bandwidth: f64) -> (Vec<f64>, Vec<f64>) {
     let lattice = Lattice::new(training, 1);
+    let (spots, weights) = binned(training, &lattice);
+    let edges = lattice.edges(bandwidth, &spots);
+    let scaled: Vec<f64> = weights.iter().zip(&edges).map(|(w, e)| w / e).collect();
+    let field = lattice.spread(bandwidth, &spots, &scaled, Power::One);
+    let region = training.region();
+    let mut density: Vec<f64> = (0..region.len()).map(|c| field[lattice.spot(training, c)]).collect();
+    normalise(&mut density, region.areas());
+    (density, support(training, &lattice, bandwidth))
+}
+
+/// Units shared out among the four nearest cell centres, nearer ones more: the kernel's answer is then
+/// right to second order in the cell's side, where the nearest centre alone is right to first order
+/// only.
+///
+/// # Source
+/// Jones, M. C. & Lotwick, H. W. (1984), Applied Statistics 33, 120–122 (linear binning).
+fn binned(training: &Training, lattice: &Lattice) -> (Vec<Spot>, Vec<f64>) {
+    let mut bins: BTreeMap<Spot, f64> = BTreeMap::new();
+    for unit in training.units() {
+        let spot = lattice.spot(training, unit.cell as usize);
+        for (share, at) in lattice.corners(spot, unit.offset) {
+            *bins.entry(at).or_insert(0.0) += share * unit.weight;
+        }
+    }
+    bins.into_iter().unzip()
+}
+
+/// Effective number of distinct places that carry the weight of every cell.
+fn support(training: &Training, lattice: &Lattice, bandwidth: f64) -> Vec<f64> {
     let places = training.places();
     let spots: Vec<Spot> = places.iter().map(|(c, _)| lattice.spot(training, *c)).collect();
     let edges = lattice.edges(bandwidth, &spots);
@@ -125,14 +156,10 @@ fn surface(training: &Training, bandwidth: f64) -> (Vec<f64>, Vec<f64>) {
     let squares: Vec<f64> = weights.iter().map(|w| w * w).collect();
     let first = lattice.spread(bandwidth, &spots, &weights, Power::One);
     let second = lattice.spread(bandwidth, &spots, &squares, Power::Two);
-    let region = training.region();
     let at = |cell: usize| lattice.spot(training, cell);
-    let support = (0..region.len())
+    (0..training.region().len())
         .map(|c| if second[at(c)] > 0.0 { float::square(first[at(c)]) / second[at(c)] } else { 0.0 })
-        .collect();
-    let mut density: Vec<f64> = (0..region.len()).map(|c| first[at(c)]).collect();
-    normalise(&mut density, region.areas());
-    (density, support)
+        .collect()
 }
 
 /// Searches the bandwidth that best foretells left-out outings.

@@ -54,6 +54,24 @@ impl Lattice {
         (flat / self.grid_columns / self.step, flat % self.grid_columns / self.step)
     }
 
+    /// The spots among which a unit at an offset from its own is shared out, each with its share.
+    pub(super) fn corners(&self, (row, column): Spot, offset: [f32; 2]) -> Vec<(f64, Spot)> {
+        let (rows, wraps) = (self.mass.nrows(), matches!(self.form, Form::Globe { wraps: true, .. }));
+        let next = |at: usize, offset: f32, count: usize, wraps: bool| {
+            let to = at as isize + if offset > 0.0 { 1 } else { -1 };
+            let to = if wraps { to.rem_euclid(count as isize) } else { to };
+            let part = f64::from(offset.abs());
+            if part > 0.0 && (0..count as isize).contains(&to) {
+                vec![(1.0 - part, at), (part, to as usize)]
+            } else {
+                vec![(1.0, at)]
+            }
+        };
+        let across = next(column, offset[0], self.columns, wraps);
+        let down = next(row, offset[1], rows, false);
+        down.iter().flat_map(|(p, r)| across.iter().map(move |(q, c)| (p * q, (*r, *c)))).collect()
+    }
+
     /// Mass of the kernel that falls on observed area, at each spot.
     pub(super) fn edges(&self, sigma: f64, spots: &[Spot]) -> Vec<f64> {
         match &self.form {

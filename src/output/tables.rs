@@ -29,11 +29,12 @@ pub fn held_out_csv(finding: &Finding) -> String {
 
 /// Every held-out unit under every candidate.
 pub fn held_out_units_csv(finding: &Finding) -> String {
-    let mut out = String::from("unit,column,row,fold,candidate,log_density\n");
+    let mut out = String::from("unit,column,row,fold,candidate,log_density,weight\n");
     for c in &finding.candidates {
         for u in &c.scores.units {
             let (column, row) = finding.region.position(u.what.cell as usize);
-            out += &format!("{},{column},{row},{},{},{}\n", u.unit + 1, u.fold, c.name, u.log_density);
+            let (unit, weight) = (u.unit + 1, u.what.weight);
+            out += &format!("{unit},{column},{row},{},{},{},{weight}\n", u.fold, c.name, u.log_density);
         }
     }
     out

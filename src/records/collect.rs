@@ -4,7 +4,7 @@ use std::collections::BTreeMap;
 use std::sync::Arc;
 
 use crate::diag::{Diagnostic, Outcome};
-use crate::grid::Region;
+use crate::grid::{CrsKind, Region};
 
 use super::dates::DateRange;
 use super::ledger::{Ledger, Rule};
@@ -125,23 +125,29 @@ struct Visit {
     records: u32,
     dataset: u32,
     uncertainty: f32,
+    /// Sum of the records' offsets, in whole parts so that no order of adding changes it.
+    offset: [i64; 2],
 }
 
 impl Visits {
-    fn add(&mut self, key: VisitKey, dataset: u32, uncertainty: f32) -> u32 {
+    fn add(&mut self, key: VisitKey, (dataset, uncertainty, offset): (u32, f32, [i64; 2])) -> u32 {
         let next = self.found.len() as u32;
         let n = *self.numbers.entry(key).or_insert(next);
         if n == next {
-            self.found.push(Visit { key, records: 0, dataset, uncertainty });
+            self.found.push(Visit { key, records: 0, dataset, uncertainty, offset: [0; 2] });
         }
         let visit = &mut self.found[n as usize];
         visit.records += 1;
+        visit.offset[0] += offset[0];
+        visit.offset[1] += offset[1];
         visit.dataset = visit.dataset.min(dataset);
         visit.uncertainty = visit.uncertainty.min(uncertainty); // a number beats not-a-number
         n
     }
 }
 
+/// Parts into which a cell's side is divided when positions in it are added up.
+const PARTS: f64 = 65_536.0;
 /// Rows gathered before their coordinates are turned together.
 const BATCH: usize = 16_384;
 
@@ -256,7 +262,8 @@ impl<'a> Collector<'a> {
         match (inside, inside.or_else(snapped)) {
             (_, Some(cell)) => {
                 self.ledger.keep(inside.is_none());
-                self.keep(row, cell as u32);
+                let offset = inside.map_or([0; 2], |_| self.offset(cell, x, y));
+                self.keep(row, cell as u32, offset);
                 Ok(true)
             }
             (_, None) => {
@@ -272,10 +279,22 @@ impl<'a> Collector<'a> {
         }
     }
 
-    fn keep(&mut self, row: &Waiting, cell: u32) {
+    /// Where in its cell a place lies, in parts of a column and a row.
+    fn offset(&self, cell: usize, x: f64, y: f64) -> [i64; 2] {
+        let grid = self.region.grid();
+        let (cx, cy) = self.region.centre(cell);
+        let mut across = (x - cx) / grid.transform[1];
+        if grid.crs.kind == CrsKind::Geographic {
+            let turn = 360.0 / grid.transform[1];
+            across -= (across / turn).round() * turn;
+        }
+        [across, (y - cy) / grid.transform[5]].map(|part| (part.clamp(-0.5, 0.5) * PARTS).round() as i64)
+    }
+
+    fn keep(&mut self, row: &Waiting, cell: u32, offset: [i64; 2]) {
         let days = row.passed.date.map(day_numbers);
         let radius = row.passed.uncertainty.map_or(f32::NAN, |r| r as f32);
-        let visit = self.visits.add((cell, row.observer, days), row.dataset, radius);
+        let visit = self.visits.add((cell, row.observer, days), (row.dataset, radius, offset));
         if let Some(kept) = &mut self.kept {
             kept.push(Kept { file: row.file, line: row.line, cell, visit });
         }
@@ -340,11 +359,12 @@ impl<'a> Collector<'a> {
                 weight: if self.plan.count == Count::Records { f64::from(v.records) } else { 1.0 },
                 outing: outings[&(v.key.1, v.key.2)],
                 uncertainty: v.uncertainty,
+                offset: v.offset.map(|o| (o as f64 / PARTS / f64::from(v.records)) as f32),
             })
             .collect();
         if self.plan.count == Count::Places {
             units.dedup_by_key(|u| u.cell); // visits are sorted by cell
-            units.iter_mut().for_each(|u| u.outing = u.cell);
+            units.iter_mut().for_each(|u| (u.outing, u.offset) = (u.cell, [0.0; 2]));
         }
         let places = visits.chunk_by(|a, b| a.key.0 == b.key.0).count();
         let known = |pick: fn(&Visit) -> u32| visits.iter().any(|v| pick(v) > 0);

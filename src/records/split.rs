@@ -229,6 +229,7 @@ impl Training {
             weight: 1.0,
             outing: i as u32,
             uncertainty: f32::NAN,
+            offset: [0.0; 2],
         };
         Self { region, units: cells.iter().enumerate().map(unit).collect(), available: None, outings: true }
     }

@@ -16,6 +16,9 @@ pub struct Unit {
     pub outing: u32,
     /// Smallest stated radius of uncertainty among its records, metres; not a number where unknown.
     pub uncertainty: f32,
+    /// Where in its cell it lies, from the centre, in columns and rows (−½ to ½): the mean of its
+    /// records; 0 for a place.
+    pub offset: [f32; 2],
 }
 
 /// Median of the stated uncertainties; `None` where none is stated.
