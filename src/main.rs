@@ -1,2 +1,9 @@
-//! The command line.
-fn main() {}
+//! The `trodden` command.
+
+mod cli;
+
+use std::process::ExitCode;
+
+fn main() -> ExitCode {
+    cli::main()
+}

@@ -41,17 +41,17 @@ pub struct Verdict {
 }
 
 /// Ranks candidates; `complexity` is the number of fitted parameters of each.
-pub fn judge(candidates: &[CandidateScores], complexity: &[usize], resamples: usize, seed: Seed) -> Verdict {
+pub fn judge(candidates: &[&CandidateScores], complexity: &[usize], resamples: usize, seed: Seed) -> Verdict {
     let draws = Resamples::draw(candidates[0].weight.len(), resamples, seed);
     let log = |c: &CandidateScores| c.pooled.log_score.unwrap_or(f64::NEG_INFINITY);
     let mut order: Vec<usize> = (0..candidates.len()).collect();
-    order.sort_by(|a, b| log(&candidates[*b]).total_cmp(&log(&candidates[*a])));
+    order.sort_by(|a, b| log(candidates[*b]).total_cmp(&log(candidates[*a])));
     let best = order[0];
     let standings: Vec<Standing> = candidates
         .iter()
         .enumerate()
         .map(|(i, c)| {
-            let versus_best = difference(c, &candidates[best], &draws);
+            let versus_best = difference(c, candidates[best], &draws);
             let apart = versus_best.interval.is_some_and(|(low, high)| high < 0.0 || low > 0.0);
             Standing {
                 candidate: i,

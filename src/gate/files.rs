@@ -38,6 +38,11 @@ fn settle_gdal() {
     });
 }
 
+/// Versions of the libraries behind the gate.
+pub fn libraries() -> String {
+    format!("GDAL {}", gdal::version::VersionInfo::release_name())
+}
+
 /// Inputs in a folder, opened as the study asks for them.
 pub struct Files {
     folder: PathBuf,
@@ -114,11 +119,6 @@ impl Files {
             }
         }
         names.iter().filter_map(|n| digest(&self.folder.join(n), n)).collect()
-    }
-
-    /// Datums that no CRS is known for, with how many records name them.
-    pub fn unknown_datums(&self) -> BTreeMap<String, u64> {
-        self.unknown_datums.borrow().clone()
     }
 }
 
@@ -211,7 +211,7 @@ impl Sources for Files {
         Ok(())
     }
 
-    fn datum<'a>(&self, datum: &'a str, plan: &'a str) -> &'a str {
+    fn datum<'a>(&self, datum: &'a str, plan: &'a str, records: usize) -> &'a str {
         if datum.is_empty()
             || datum.starts_with("GEOGCRS[")
             || datum.starts_with("PROJCRS[")
@@ -228,8 +228,22 @@ impl Sources for Files {
         {
             return datum;
         }
-        *self.unknown_datums.borrow_mut().entry(datum.to_owned()).or_insert(0) += 1;
+        *self.unknown_datums.borrow_mut().entry(datum.to_owned()).or_insert(0) += records as u64;
         plan
+    }
+
+    fn remarks(&self) -> Vec<Diagnostic> {
+        let unknown = self.unknown_datums.borrow();
+        unknown
+            .iter()
+            .map(|(datum, records)| {
+                let text = format!(
+                    "{records} records name the datum `{datum}`, which is not known: read as the plan's `crs`"
+                );
+                Diagnostic::input("unknown_datum", "geodeticDatum", text)
+                    .cure("write datums as EPSG codes, such as EPSG:4326")
+            })
+            .collect()
     }
 
     fn degrees(&self, definition: &str) -> Outcome<bool> {

@@ -18,7 +18,7 @@ mod values;
 
 pub use crs::transformer_label;
 pub use digest::{InputFile, digest};
-pub use files::Files;
+pub use files::{Files, libraries};
 pub use geotiff::{Band, write as write_geotiff};
 pub use scale::Wander;
 pub use sources::{GridRequest, LayerData, Peek, Sources};

@@ -2,7 +2,7 @@
 
 use std::sync::Arc;
 
-use crate::diag::{Observer, Outcome, Warnings};
+use crate::diag::{Diagnostic, Observer, Outcome, Warnings};
 use crate::grid::{Grid, Region};
 use crate::proxies::{Features, LayerPlan};
 use crate::records::{RecordsPlan, Row};
@@ -95,8 +95,14 @@ pub trait Sources {
     /// When the CRS is unknown.
     fn project(&self, from: &str, grid: &Grid, x: &mut [f64], y: &mut [f64]) -> Outcome<()>;
 
-    /// Turns a record's datum into the CRS to use: its own where it is known, else the plan's.
-    fn datum<'a>(&self, datum: &'a str, plan: &'a str) -> &'a str;
+    /// Turns the datum of so many records into the CRS to use: its own where it is known, else the
+    /// plan's, which is noted.
+    fn datum<'a>(&self, datum: &'a str, plan: &'a str, records: usize) -> &'a str;
+
+    /// What was noted on the way and deserves attention.
+    fn remarks(&self) -> Vec<Diagnostic> {
+        Vec::new()
+    }
 
     /// Whether a CRS holds longitudes and latitudes.
     ///

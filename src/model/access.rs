@@ -75,6 +75,12 @@ pub(super) fn fit(
     Ok(model.result(&found, context))
 }
 
+/// Whether the layers can be used at all.
+pub(super) fn examine(name: &str, terms: &[TermPlan], layers: &ProxyStack) -> Outcome<()> {
+    let place = format!("candidate `{name}`");
+    terms.iter().try_for_each(|t| Term::new(t, layers.layer(&t.layer), &place).map(drop))
+}
+
 /// The cells a pass runs over.
 enum Cells<'a> {
     All(usize),

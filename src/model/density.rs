@@ -53,6 +53,16 @@ pub(super) fn fit(name: &str, plan: &DensityPlan, training: &Training, context: 
     Ok(Fitted { density, parameters, evidence, support: Some(support), warnings })
 }
 
+/// Whether a given bandwidth can be used on a grid.
+pub(super) fn examine(name: &str, plan: &DensityPlan, cell: Metres) -> Outcome<()> {
+    match plan.bandwidth {
+        Fit::Given(length) => {
+            odd(name, length.metres(cell).expect("the plan refuses degrees"), cell, f64::INFINITY).map(drop)
+        }
+        Fit::Fitted => Ok(()),
+    }
+}
+
 /// A given bandwidth that is too small is an error, one that is too large a warning.
 fn odd(name: &str, given: Metres, cell: Metres, half: f64) -> Outcome<Option<Diagnostic>> {
     let place = format!("candidate `{name}`");

@@ -4,6 +4,7 @@ use crate::diag::{Diagnostic, Outcome};
 use crate::maths::sum::{par_sum, sum};
 use crate::proxies::ProxyStack;
 use crate::records::{Blocks, Training};
+use crate::units::Metres;
 
 use super::settings::{CandidateKind, CandidatePlan};
 use super::{access, density};
@@ -81,6 +82,18 @@ pub fn fit(
         CandidateKind::Uses { terms, base } => {
             access::fit(&access::Asked { name: &plan.name, terms, base: *base }, training, layers, context)
         }
+    }
+}
+
+/// Whether a candidate's layers and given numbers can be used at all.
+///
+/// # Errors
+/// When a layer is constant or has values its curve cannot take, or a bandwidth is below half a cell.
+pub fn examine(plan: &CandidatePlan, layers: &ProxyStack, cell: Metres) -> Outcome<()> {
+    match &plan.kind {
+        CandidateKind::Uniform => Ok(()),
+        CandidateKind::Density(density) => density::examine(&plan.name, density, cell),
+        CandidateKind::Uses { terms, .. } => access::examine(&plan.name, terms, layers),
     }
 }
 

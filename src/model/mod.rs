@@ -9,5 +9,5 @@ mod lattice;
 mod settings;
 mod terms;
 
-pub use fitted::{Context, Evidence, Fitted, OddsBin, Parameter, fit, observed_to_available};
+pub use fitted::{Context, Evidence, Fitted, OddsBin, Parameter, examine, fit, observed_to_available};
 pub use settings::{CandidateKind, CandidatePlan, CurveForm, DensityPlan, Fit, TermPlan};

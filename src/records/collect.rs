@@ -299,8 +299,9 @@ impl<'a> Collector<'a> {
     ///
     /// # Errors
     /// When no record is left; the error holds the ledger and what may be wrong.
-    pub fn finish(mut self) -> Outcome<(Records, Vec<Kept>)> {
+    pub fn finish(mut self) -> Outcome<(Records, Vec<Kept>, Option<Diagnostic>)> {
         self.settle()?;
+        let smell = self.smells();
         if self.ledger.kept() == 0 {
             return Err(self.nothing_left().into());
         }
@@ -308,7 +309,7 @@ impl<'a> Collector<'a> {
         let mut kept = self.kept.take().unwrap_or_default();
         kept.iter_mut().for_each(|k| k.visit = renumbered[k.visit as usize] + 1);
         kept.sort_unstable_by_key(|k| (k.file, k.line));
-        Ok((self.records(&visits), kept))
+        Ok((self.records(&visits), kept, smell))
     }
 
     /// The visits in an order that does not depend on the order of rows, and each one's place in it.
@@ -394,7 +395,7 @@ impl<'a> Collector<'a> {
     }
 
     /// A warning about coordinates that look swapped or written with a decimal comma.
-    pub fn smells(&self) -> Option<Diagnostic> {
+    fn smells(&self) -> Option<Diagnostic> {
         let cure = self.hints.cure()?;
         let count = self.hints.swapped.max(self.hints.commas);
         (count * 100 >= self.ledger.read()).then(|| {

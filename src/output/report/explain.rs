@@ -134,12 +134,16 @@ fn of_layer(
     let scale = if layer.measure == Measure::Distance { Written::Length } else { Written::Number };
     let plain = |meaning: String| (Written::Number, String::new(), meaning);
     match (form, name) {
-        (CurveForm::Exponential, _) => {
-            (scale, String::new(), "what the curve adds falls to 37 % at this distance, to 14 % at twice it".into())
-        }
-        (CurveForm::HalfNormal, _) => {
-            (scale, String::new(), "what the curve adds falls to 61 % at this distance, to 14 % at twice it".into())
-        }
+        (CurveForm::Exponential, _) => (
+            scale,
+            String::new(),
+            "what the curve adds falls to 37 % at this distance, to 14 % at twice it".into(),
+        ),
+        (CurveForm::HalfNormal, _) => (
+            scale,
+            String::new(),
+            "what the curve adds falls to 61 % at this distance, to 14 % at twice it".into(),
+        ),
         (CurveForm::FallingPower, "scale") => {
             let left = words::percent(float::pow(2.0, -other("shape")));
             (scale, String::new(), format!("what the curve adds falls to {left} at this distance"))
@@ -150,13 +154,20 @@ fn of_layer(
             plain(format!("twice as much {quoted} goes with {factor} times what the curve adds"))
         }
         (CurveForm::RisingPower, _) => {
-            let unit = if layer.unit.is_empty() { String::new() } else { format!(" {}", words::name(&layer.unit)) };
-            (Written::Number, unit, "added to every value, so that a cell of none is not a cell of no effort".into())
+            let unit =
+                if layer.unit.is_empty() { String::new() } else { format!(" {}", words::name(&layer.unit)) };
+            (
+                Written::Number,
+                unit,
+                "added to every value, so that a cell of none is not a cell of no effort".into(),
+            )
         }
         (CurveForm::LogLinear, _) => {
             let (low, _, high) = layer.field.summary();
             let rise = words::times(float::exp(value * (high - low)));
-            plain(format!("from the lowest to the highest value of {quoted} what the curve adds grows {rise} times"))
+            plain(format!(
+                "from the lowest to the highest value of {quoted} what the curve adds grows {rise} times"
+            ))
         }
     }
 }
@@ -206,7 +217,8 @@ fn observed(total: f64, class: &OddsBin, whole: f64, axis: &Axis) -> Observed {
 
 /// The axis of ratios: all that is shown fits, but nothing far below the least observed.
 fn up(points: &[Observed], line: &[(f64, f64)]) -> Axis {
-    let least = points.iter().filter(|o| o.ratio > 0.0).map(|o| o.interval.0.min(o.whole)).fold(1.0, f64::min);
+    let least =
+        points.iter().filter(|o| o.ratio > 0.0).map(|o| o.interval.0.min(o.whole)).fold(1.0, f64::min);
     let most = points.iter().map(|o| o.interval.1.max(o.whole)).fold(1.0, f64::max);
     let top = line.iter().map(|p| p.1).fold(most, f64::max).min(most * 4.0);
     let foot = line.iter().map(|p| p.1).fold(least, f64::min).max(least / 3.0).max(1e-3);
@@ -232,17 +244,25 @@ fn curve_figure(f: &Finding, c: &CandidateFinding, s: &Shown) -> Value {
         (Measure::Value, "") => short,
         (Measure::Value, u) => format!("{short} ({})", u.chars().take(20).collect::<String>()),
     };
-    let rows: Vec<Value> =
-        s.classes.iter().zip(&points).map(|(b, o)| row(total, b, o, divisor)).collect();
+    let rows: Vec<Value> = s.classes.iter().zip(&points).map(|(b, o)| row(total, b, o, divisor)).collect();
     let (first, last) = (&points[0], &points[points.len() - 1]);
     let say = |o: &Observed| format!("{} times", words::times(o.ratio));
     let alt = format!(
         "{name}: observed share over available share is {} the even share in the lowest class and {} in the highest; the fitted curve ({}) runs from {} to {} times. The figures are in the table below.",
-        say(first), say(last), form_words(s.form), words::times(line[0].1), words::times(line[line.len() - 1].1),
+        say(first),
+        say(last),
+        form_words(s.form),
+        words::times(line[0].1),
+        words::times(line[line.len() - 1].1),
     );
     let below = line.iter().filter(|p| p.1 >= up.low && p.1 <= up.high).copied().collect();
-    let chart =
-        CurveChart { across, up, titles: (title, "effort per area, × even".into()), observed: points, line: below };
+    let chart = CurveChart {
+        across,
+        up,
+        titles: (title, "effort per area, × even".into()),
+        observed: points,
+        line: below,
+    };
     context! { name, form => form_words(s.form), unit, alt, rows, svg => plots::curve(&chart) }
 }
 
@@ -277,7 +297,10 @@ fn criterion(c: &CandidateFinding, e: &Evidence) -> Option<Value> {
         .collect();
     let alt = format!(
         "Criterion over the bandwidths tried, {} to {}; it is highest, {} nats, at {}. The figures are in the table below.",
-        words::length(low), words::length(high), words::decimals(most, 3), words::length(chosen),
+        words::length(low),
+        words::length(high),
+        words::decimals(most, 3),
+        words::length(chosen),
     );
     Some(context! {
         parameter => words::name(&e.parameter), criterion => e.criterion, chosen => words::length(chosen), alt,

@@ -35,11 +35,16 @@ fn recommended(f: &Finding) -> String {
     let (chosen, best) = (f.verdict.chosen, ranked(f)[0].candidate);
     let name = named(f, chosen);
     if chosen == best {
-        return format!("“{name}” has the highest log score on held-out {}.", words::nouns(f.records.count).1);
+        return format!(
+            "“{name}” has the highest log score on held-out {}.",
+            words::nouns(f.records.count).1
+        );
     }
     format!(
         "“{}” has the highest log score, but “{name}” can’t be told from it with these records and has fewer fitted parameters ({} against {}): it is the one to use.",
-        named(f, best), parameters(f, chosen), parameters(f, best),
+        named(f, best),
+        parameters(f, chosen),
+        parameters(f, best),
     )
 }
 
@@ -53,7 +58,8 @@ fn choice(f: &Finding) -> String {
         }
         Choice::Named(_) => format!(
             "The plan asks for “{}”; held-out {} speak for another: {recommended}",
-            named(f, f.delivered), words::nouns(f.records.count).1,
+            named(f, f.delivered),
+            words::nouns(f.records.count).1,
         ),
     }
 }

@@ -31,8 +31,7 @@ const NAMES: [(RGBColor, &str); 6] = [
 
 type Area<'a> = DrawingArea<SVGBackend<'a>, plotters::coord::Shift>;
 type Drawn<T> = Result<T, DrawingAreaErrorKind<std::io::Error>>;
-type Chart<'a, 'b> =
-    ChartContext<'a, SVGBackend<'b>, plotters::coord::cartesian::Cartesian2d<Axis, Axis>>;
+type Chart<'a, 'b> = ChartContext<'a, SVGBackend<'b>, plotters::coord::cartesian::Cartesian2d<Axis, Axis>>;
 
 /// What was observed in a class.
 #[derive(Debug, Clone, Copy)]
@@ -138,7 +137,9 @@ pub(super) fn intervals(rows: &[Interval], across: &Axis, title: &str) -> String
             .light_line_style(TRANSPARENT)
             .axis_style(INK.stroke_width(FINE as u32))
             .draw()?;
-        rows.iter().enumerate().try_for_each(|(i, row)| one_interval(&mut chart, across, (rows.len(), i), row))
+        rows.iter()
+            .enumerate()
+            .try_for_each(|(i, row)| one_interval(&mut chart, across, (rows.len(), i), row))
     })
 }
 
@@ -149,7 +150,7 @@ fn one_interval(chart: &mut Chart, across: &Axis, (of, i): (usize, usize), row: 
         chart.draw_series(LineSeries::new([(low, at), (high, at)], colour.stroke_width(3 * FINE as u32)))?;
     }
     chart.draw_series([Circle::new((row.value, at), 5 * FINE, colour.filled())])?;
-    let style = text(12).with_anchor::<RGBColor>(Pos::new(HPos::Left, VPos::Bottom));
+    let style = text(12).pos(Pos::new(HPos::Left, VPos::Bottom));
     chart.draw_series([Text::new(row.name.clone(), (across.low, at + 0.24), style)])?;
     Ok(())
 }
@@ -160,7 +161,11 @@ fn text(size: i32) -> TextStyle<'static> {
 }
 
 /// Axes, ticks and titles.
-fn frame<'a, 'b>(area: &'a Area<'b>, (across, up): (&Axis, &Axis), titles: (&str, &str)) -> Drawn<Chart<'a, 'b>> {
+fn frame<'a, 'b>(
+    area: &'a Area<'b>,
+    (across, up): (&Axis, &Axis),
+    titles: (&str, &str),
+) -> Drawn<Chart<'a, 'b>> {
     let widest = up.ticks.iter().map(|t| up.label(*t).chars().count()).max().unwrap_or(1) as i32;
     let mut chart = ChartBuilder::on(area)
         .margin_top(8 * FINE)
@@ -197,7 +202,10 @@ fn sheet(height: i32, draw: impl FnOnce(&Area) -> Drawn<()>) -> String {
     let body = svg.split_once('>').map_or("", |(_, rest)| rest);
     let mut out = format!("<svg class=\"plot\" viewBox=\"0 0 {width} {height}\" aria-hidden=\"true\">{body}");
     for (colour, name) in NAMES {
-        out = out.replace(&format!("\"#{:02X}{:02X}{:02X}\"", colour.0, colour.1, colour.2), &format!("\"{name}\""));
+        out = out.replace(
+            &format!("\"#{:02X}{:02X}{:02X}\"", colour.0, colour.1, colour.2),
+            &format!("\"{name}\""),
+        );
     }
     out
 }

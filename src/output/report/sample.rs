@@ -23,7 +23,12 @@ pub(super) fn plane(columns: usize, rows: usize, side: f64) -> Grid {
     Grid { columns, rows, transform: [0.0, side, 0.0, rows as f64 * side, 0.0, -side], crs }
 }
 
-fn layer(name: &str, (measure, unit): (Measure, &str), region: &Arc<Region>, of: &dyn Fn(f64, f64) -> f64) -> Layer {
+fn layer(
+    name: &str,
+    (measure, unit): (Measure, &str),
+    region: &Arc<Region>,
+    of: &dyn Fn(f64, f64) -> f64,
+) -> Layer {
     let values = (0..region.len()).map(|c| of(region.centre(c).0, region.centre(c).1)).collect();
     Layer { name: name.into(), measure, unit: unit.into(), field: Field::new(Arc::clone(region), values) }
 }
@@ -63,11 +68,11 @@ fn records(region: &Arc<Region>, layers: &ProxyStack, wanted: usize) -> Records 
         let cell = stream.below(region.len());
         let here = 0.06 + 0.94 * float::exp(-road[cell] / 3500.0);
         if stream.unit() < here {
-            let again = 1 + stream.below(3);
+            let (again, outing) = (1 + stream.below(3), (units.len() / 3) as u32);
             units.extend((0..again).map(|_| Unit {
                 cell: cell as u32,
                 weight: 1.0,
-                outing: (units.len() / 3) as u32,
+                outing,
                 uncertainty: f32::NAN,
             }));
         }
@@ -157,14 +162,8 @@ pub(super) fn finding(columns: usize, rows: usize) -> Finding {
     let all = Study { region, layers, records, blocks, parts };
     let candidates: Vec<CandidateFinding> = plans().iter().map(|p| candidate(p, &all)).collect();
     let complexity: Vec<usize> = candidates.iter().map(|c| c.fitted.complexity()).collect();
-    let (names, scores): (Vec<_>, Vec<_>) =
-        candidates.into_iter().map(|c| ((c.name, c.kind, c.fitted, c.odds), c.scores)).unzip();
+    let scores: Vec<_> = candidates.iter().map(|c| &c.scores).collect();
     let verdict = judge(&scores, &complexity, 199, Seed(1));
-    let candidates = names
-        .into_iter()
-        .zip(scores)
-        .map(|((name, kind, fitted, odds), scores)| CandidateFinding { name, kind, fitted, scores, odds })
-        .collect();
     Finding {
         title: "Hoverflies of an invented ridge, 2005–2024".into(),
         seed: Seed(1),
@@ -188,8 +187,12 @@ pub(super) fn finding(columns: usize, rows: usize) -> Finding {
             support: 5.0,
         },
         warnings: vec![
-            Diagnostic::input("low_support", "candidate `recorded`", "a cell's weight rests on 2.4 places, fewer than 5")
-                .cure("use a larger `bandwidth`, or coarser cells, before the raster leaves your hands"),
+            Diagnostic::input(
+                "low_support",
+                "candidate `recorded`",
+                "a cell's weight rests on 2.4 places, fewer than 5",
+            )
+            .cure("use a larger `bandwidth`, or coarser cells, before the raster leaves your hands"),
         ],
     }
 }

@@ -12,8 +12,10 @@ const LONGEST_NAME: usize = 120;
 /// Whether a character may stand on the page: no controls beside line breaks and tabs, no marks that
 /// turn the direction of text, no invisible ones.
 fn shown(c: char) -> bool {
-    let turns = matches!(c, '\u{61c}' | '\u{200e}' | '\u{200f}' | '\u{202a}'..='\u{202e}' | '\u{2066}'..='\u{206f}');
-    let hidden = matches!(c, '\u{200b}'..='\u{200d}' | '\u{2028}' | '\u{2029}' | '\u{feff}' | '\u{fff9}'..='\u{fffb}');
+    let turns =
+        matches!(c, '\u{61c}' | '\u{200e}' | '\u{200f}' | '\u{202a}'..='\u{202e}' | '\u{2066}'..='\u{206f}');
+    let hidden =
+        matches!(c, '\u{200b}'..='\u{200d}' | '\u{2028}' | '\u{2029}' | '\u{feff}' | '\u{fff9}'..='\u{fffb}');
     let control = c.is_control() && c != '\n' && c != '\t';
     !(turns || hidden || control)
 }
@@ -25,8 +27,7 @@ pub(super) fn clean(text: &str) -> String {
 
 /// A cleaned name on one line, cut when it is very long.
 pub(super) fn name(text: &str) -> String {
-    let line: Vec<char> =
-        clean(text).chars().map(|c| if c == '\n' || c == '\t' { ' ' } else { c }).collect();
+    let line: Vec<char> = clean(text).chars().map(|c| if c == '\n' || c == '\t' { ' ' } else { c }).collect();
     if line.len() <= LONGEST_NAME {
         return line.into_iter().collect();
     }
@@ -72,15 +73,22 @@ pub(super) fn digits(value: f64, significant: usize) -> String {
         return decimals(value, 0);
     }
     let power = float::log10(value.abs()).floor();
-    if !(-5.0..=9.0).contains(&power) {
+    if !(-4.0..=9.0).contains(&power) {
         let text = format!("{:.*e}", significant - 1, value.abs());
         let (mantissa, exponent) = text.split_once('e').unwrap_or((&text, "0"));
         let sign = if value < 0.0 { "−" } else { "" };
-        return format!("{sign}{mantissa}·10^{}", exponent.replace('-', "−"));
+        let raised: String = exponent.chars().map(raised).collect();
+        return format!("{sign}{mantissa} × 10{raised}");
     }
     let places = (significant as f64 - 1.0 - power).max(0.0) as usize;
     let text = decimals(value, places);
     if text.contains('.') { text.trim_end_matches('0').trim_end_matches('.').into() } else { text }
+}
+
+/// A sign or figure of an exponent.
+fn raised(c: char) -> char {
+    let figures = ['⁰', '¹', '²', '³', '⁴', '⁵', '⁶', '⁷', '⁸', '⁹'];
+    c.to_digit(10).map_or('⁻', |d| figures[d as usize])
 }
 
 /// A length in metres, as metres or kilometres.
@@ -156,7 +164,7 @@ mod tests {
         assert_eq!(decimals(-0.001, 2), "0.00");
         assert_eq!(digits(0.012_345, 3), "0.0123");
         assert_eq!(digits(12.0, 3), "12");
-        assert_eq!(digits(3.2e-9, 2), "3.2·10^−9");
+        assert_eq!(digits(3.2e-9, 2), "3.2 × 10⁻⁹");
         assert_eq!(digits(9.999, 2), "10");
         assert_eq!(length(12_345.0), "12.3 km");
         assert_eq!(length(250.0), "250 m");

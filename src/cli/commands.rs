@@ -1,0 +1,247 @@
+//! The commands: each reads a plan, runs the study, writes or prints what came out.
+
+use std::path::{Path, PathBuf};
+
+use serde_json::Value;
+
+use trodden::diag::{Diagnostic, Outcome, Warnings};
+use trodden::gate::{Files, Staging};
+use trodden::output::{
+    Checked, Finding, Page, Tool, check_json, comparison_csv, comparison_json, effort_json, finish,
+    held_out_csv,
+};
+use trodden::plan::{StudyPlan, read, resolved};
+use trodden::records::{Rule, Sink};
+use trodden::study::{Needs, Notes, Options, gather, run};
+use trodden::units::Bytes;
+
+use super::args::{BuildArgs, CheckArgs, Common, CompareArgs};
+use super::progress::Bars;
+use super::render::{Voice, result};
+use super::write::{DroppedTable, Run, details, manifest, surface};
+
+/// A plan read from disk, and the folder its paths are relative to.
+struct Opened {
+    plan: StudyPlan,
+    name: String,
+    folder: PathBuf,
+}
+
+fn open(path: &Path) -> Outcome<Opened> {
+    let name = path.display().to_string();
+    let text = std::fs::read(path).map_err(|e| {
+        let why =
+            if e.kind() == std::io::ErrorKind::NotFound { "no such file".to_owned() } else { e.to_string() };
+        Diagnostic::plan("no_plan", name.as_str(), why).cure("give the path of a plan (TOML)")
+    })?;
+    let text = String::from_utf8(text).map_err(|e| {
+        let line = e.as_bytes()[..e.utf8_error().valid_up_to()].iter().filter(|b| **b == b'\n').count() + 1;
+        Diagnostic::plan("not_text", format!("{name}:{line}"), "the plan holds bytes that are not UTF-8")
+            .cure("save it as UTF-8")
+    })?;
+    let plan = read(text.strip_prefix('\u{feff}').unwrap_or(&text), &name)?;
+    let folder =
+        path.parent().filter(|p| !p.as_os_str().is_empty()).unwrap_or_else(|| Path::new(".")).to_owned();
+    Ok(Opened { plan, name, folder })
+}
+
+/// Memory that may be used.
+fn memory(common: &Common) -> Bytes {
+    common.memory.unwrap_or_else(|| {
+        let free = std::fs::read_to_string("/proc/meminfo").ok().and_then(|text| {
+            let line = text.lines().find(|l| l.starts_with("MemAvailable:"))?;
+            line.split_whitespace().nth(1)?.parse::<u64>().ok()
+        });
+        Bytes(free.map_or(4 << 30, |kib| kib * 1024 / 10 * 7))
+    })
+}
+
+fn tool() -> Tool {
+    Tool { version: env!("CARGO_PKG_VERSION"), libraries: trodden::gate::libraries() }
+}
+
+/// Nobody keeps the dropped records of a check.
+struct Nowhere;
+
+impl Sink for Nowhere {
+    fn dropped(&mut self, _: usize, _: u64, _: Rule, _: &str) -> Outcome<()> {
+        Ok(())
+    }
+}
+
+/// `trodden check`.
+pub fn check(args: &CheckArgs, common: &Common, voice: Voice) -> Outcome<()> {
+    let opened = open(&args.plan)?;
+    let plan = &opened.plan;
+    let files = Files::new(&opened.folder);
+    let bars = Bars::new(voice.shows_progress());
+    let needs = Needs { sources: &files, observer: &bars, memory: memory(common), kept: false };
+    let mut notes = Notes::default();
+    let gathered = gather(plan, &needs, &mut Nowhere, &mut notes);
+    let outcome = gathered.and_then(|g| trodden::study::ready(plan, &g).map(|()| g));
+    bars_end(&bars);
+    let inputs = plan
+        .layers
+        .iter()
+        .map(|l| (l.file.as_str(), l.table.as_deref()))
+        .chain(plan.records.files.iter().map(|f| (f.as_str(), plan.records.table.as_deref())))
+        .filter_map(|(file, table)| trodden::gate::Sources::peek(&files, file, table).ok())
+        .map(|p| (p.file, p.kind, p.crs, p.extent, p.count))
+        .collect();
+    let (problems, records) = match &outcome {
+        Ok(g) => (Vec::new(), Some(g.records.ledger.lines())),
+        Err(p) => (p.0.clone(), None),
+    };
+    let checked = Checked {
+        grid: notes.grid.clone(),
+        inputs,
+        memory_bytes: notes.cost.map(|c| c.memory.0),
+        seconds: notes.cost.map(|c| c.seconds),
+        problems,
+        warnings: notes.warnings.0.clone(),
+    };
+    warn(&notes.warnings, voice);
+    if common.json {
+        result(&pretty(&check_json(&checked)));
+    } else if !common.quiet {
+        result(&super::write::check_words(&opened.name, plan, &checked, records.as_deref()));
+    }
+    outcome.map(drop)
+}
+
+fn bars_end(bars: &Bars) {
+    trodden::diag::Observer::end(bars);
+}
+
+fn warn(warnings: &Warnings, voice: Voice) {
+    warnings.0.iter().for_each(|w| voice.warning(w));
+}
+
+fn pretty(value: &Value) -> String {
+    serde_json::to_string_pretty(value).unwrap_or_default()
+}
+
+/// Runs a study into a staging folder; the caller writes what it wants and commits.
+fn study(
+    opened: &Opened,
+    target: &Path,
+    common: &Common,
+    voice: Voice,
+    wish: Wish,
+) -> Outcome<(Finding, Run)> {
+    let time = now();
+    let files = Files::new(&opened.folder);
+    let mut staging = Staging::open(target)?;
+    let mut dropped = DroppedTable::create(&mut staging, &opened.plan.records.files)?;
+    let bars = Bars::new(voice.shows_progress());
+    let needs = Needs { sources: &files, observer: &bars, memory: memory(common), kept: wish.kept };
+    let mut notes = Notes::default();
+    let options = Options { candidate: wish.candidate, tool: tool() };
+    let outcome = run(&opened.plan, &needs, options, &mut dropped, &mut notes);
+    bars_end(&bars);
+    if outcome.is_err() {
+        warn(&notes.warnings, voice);
+    }
+    let finding = outcome?;
+    finding.warnings.iter().for_each(|w| voice.warning(w));
+    dropped.finish()?;
+    let plan = resolved(&opened.plan);
+    let mut inputs = files.inputs();
+    inputs.insert(
+        0,
+        trodden::gate::digest(&opened.folder.join(file_name(&opened.name)), &opened.name).ok_or_else(
+            || {
+                Diagnostic::plan("no_plan", opened.name.as_str(), "the plan vanished during the run")
+                    .cure("run again")
+            },
+        )?,
+    );
+    Ok((finding, Run { staging, plan, inputs, stages: notes.stages, time }))
+}
+
+/// What a command wants of a run.
+#[derive(Clone, Copy)]
+struct Wish<'a> {
+    candidate: Option<&'a str>,
+    kept: bool,
+}
+
+fn file_name(path: &str) -> String {
+    Path::new(path).file_name().map(|n| n.to_string_lossy().into_owned()).unwrap_or_default()
+}
+
+fn now() -> String {
+    let now = jiff::Timestamp::now();
+    jiff::Timestamp::from_second(now.as_second()).unwrap_or(now).to_string()
+}
+
+fn target(wanted: Option<&PathBuf>, opened: &Opened) -> PathBuf {
+    wanted.cloned().unwrap_or_else(|| opened.folder.join(&opened.plan.output.folder))
+}
+
+/// `trodden build`.
+pub fn build(args: &BuildArgs, common: &Common, voice: Voice) -> Outcome<()> {
+    let opened = open(&args.plan)?;
+    let target = target(args.output.as_ref(), &opened);
+    let output = &opened.plan.output;
+    let wish = Wish { candidate: args.candidate.as_deref(), kept: output.details };
+    let (finding, mut run) = study(&opened, &target, common, voice, wish)?;
+    let finished = finish(&finding.chosen().fitted.density, &finding.region, &finding.surface);
+    run.stage("write", |run| {
+        surface(run, "effort.tif", &finding, finding.chosen(), (&finished, output.compress))?;
+        let page = Page {
+            time: run.time.clone(),
+            plan: run.plan_text(),
+            command: format!("trodden build {}", opened.name),
+        };
+        run.staging.write("effort.json", pretty(&effort_json(&finding, &finished)).as_bytes())?;
+        run.staging.write("held-out.csv", held_out_csv(&finding).as_bytes())?;
+        run.staging.write("report.html", trodden::output::report(&finding, &finished, &page).as_bytes())?;
+        if output.details { details(run, &finding, output.compress) } else { Ok(()) }
+    })?;
+    manifest(&mut run, &finding)?;
+    let placed = run.staging.commit()?;
+    if common.json {
+        result(&pretty(&effort_json(&finding, &finished)));
+    } else if !common.quiet {
+        result(&super::write::build_words(&finding, &finished, &target, placed.len()));
+    }
+    Ok(())
+}
+
+/// `trodden compare`.
+pub fn compare(args: &CompareArgs, common: &Common, voice: Voice) -> Outcome<()> {
+    let opened = open(&args.plan)?;
+    let target = target(args.output.as_ref(), &opened);
+    let output = &opened.plan.output;
+    let (finding, mut run) = study(&opened, &target, common, voice, Wish { candidate: None, kept: false })?;
+    run.stage("write", |run| {
+        for candidate in &finding.candidates {
+            let finished = finish(&candidate.fitted.density, &finding.region, &finding.surface);
+            surface(
+                run,
+                &format!("surface-{}.tif", candidate.name),
+                &finding,
+                candidate,
+                (&finished, output.compress),
+            )?;
+        }
+        let page = Page {
+            time: run.time.clone(),
+            plan: run.plan_text(),
+            command: format!("trodden compare {}", opened.name),
+        };
+        run.staging.write("comparison.json", pretty(&comparison_json(&finding)).as_bytes())?;
+        run.staging.write("comparison.csv", comparison_csv(&finding).as_bytes())?;
+        run.staging.write("held-out.csv", held_out_csv(&finding).as_bytes())?;
+        run.staging.write("comparison.html", trodden::output::comparison(&finding, &page).as_bytes())
+    })?;
+    manifest(&mut run, &finding)?;
+    let placed = run.staging.commit()?;
+    if common.json {
+        result(&pretty(&comparison_json(&finding)));
+    } else if !common.quiet {
+        result(&super::write::compare_words(&finding, &target, placed.len()));
+    }
+    Ok(())
+}
