@@ -343,8 +343,6 @@ fn what_later_versions_fill_in_is_refused_by_name() {
     refused(&with("end", "[surface]\nuncertainty = true"), "true", "`uncertainty = true` is");
     refused(&with("end", "[output]\nalso = [\"ascii-grid\"]"), "[\"ascii-grid\"]", "`also");
     refused(&with("end", "[environment]\nrasters = [\"e/*.tif\"]"), "environment", "`environment` is");
-    let blend = "[[candidate]]\nname = \"mixed\"\nblend = [\"recorded\", \"uniform\"]";
-    refused(&with("end", blend), "blend", "`blend` is");
     let more = access("roads = { curve = \"power\" } }\nremainder = { bandwidth = \"fit\"");
     refused(&more, "remainder", "`remainder` is");
     refused(
@@ -365,9 +363,11 @@ fn what_later_versions_fill_in_is_checked_all_the_same() {
     assert_eq!(rules(&with("end", "[holdout]\nbuffer = 0")), ["missing_unit"]);
     assert_eq!(rules(&with("end", "[environment]\nrasters = \"a.tif\"")), ["not_supported", "wrong_type"]);
     let blend = |names: &str| with("end", &format!("[[candidate]]\nname = \"mixed\"\nblend = [{names}]"));
-    assert_eq!(rules(&blend("\"recorder\"")), ["not_supported", "unknown_candidate"]);
-    assert_eq!(rules(&blend("\"mixed\"")), ["not_supported", "blend_of_blend"]);
+    assert_eq!(rules(&blend("\"recorder\"")), ["out_of_range", "unknown_candidate"]);
+    assert_eq!(rules(&blend("\"mixed\"")), ["out_of_range", "blend_of_blend"]);
     assert_eq!(rules(&blend("")), ["empty"]);
+    assert_eq!(rules(&blend("\"recorded\", \"recorded\"")), ["duplicate_name"]);
+    assert!(trodden::plan::read(&blend("\"recorded\", \"uniform\""), "plan.toml").is_ok());
     let wrong = access("people = { curve = \"hazard-rate\" }");
     assert_eq!(rules(&wrong), ["not_supported", "curve_direction"]);
 }

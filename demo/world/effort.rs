@@ -19,6 +19,8 @@ pub const EVEN_SHARE: f64 = 0.08;
 
 /// Reach of the reserve: standard deviation of the bump, in metres.
 pub const RESERVE_SD: f64 = 400.0;
+/// Radius of the reserve on the map, in metres.
+const RESERVE_RADIUS: f64 = 1_000.0;
 
 /// The known effort, in parts. Each field adds up to 1 over the land.
 pub struct Effort {
@@ -104,6 +106,20 @@ fn pick_reserve(land: &Land, climate: &Climate, main: &Field) -> usize {
     };
     let cells = land.cells().into_iter().filter(walk);
     cells.max_by(|&a, &b| climate.heath[a].total_cmp(&climate.heath[b])).unwrap_or(0)
+}
+
+/// Share of each cell that lies in the reserve as the map has it: a disc around its middle.
+pub fn reserve_cover(middle: usize) -> Field {
+    const PARTS: usize = 10;
+    let at = centre(middle);
+    let cover = |cell: usize| {
+        let corner = centre(cell).shifted(-CELL / 2.0, -CELL / 2.0);
+        let part = |i: usize| (i as f64 + 0.5) * CELL / PARTS as f64;
+        let inside =
+            |i: &usize| corner.shifted(part(i % PARTS), part(i / PARTS)).distance(at) <= RESERVE_RADIUS;
+        (0..PARTS * PARTS).filter(inside).count() as f64 / (PARTS * PARTS) as f64
+    };
+    (0..CELLS).map(cover).collect()
 }
 
 fn smooth_bump(cells: &[usize], middle: usize, sd: f64) -> Field {

@@ -87,6 +87,8 @@ impl World {
         for (name, field) in fields {
             maps::write_raster(&fresh(&environment, name)?, &self.on_land(field), COLUMNS)?;
         }
+        let reserve = effort::reserve_cover(self.effort.reserve_cell);
+        maps::write_raster(&fresh(folder, "reserve.tif")?, &self.on_land(&reserve), COLUMNS)?;
         maps::write_raster(&fresh(folder, "population.tif")?, &self.people, towns::COARSE_COLUMNS)?;
         maps::write_region(&fresh(folder, "region.gpkg")?, &outline::polygons(&self.land.inside))?;
         maps::write_roads(&fresh(folder, "roads.gpkg")?, &self.roads)?;

@@ -316,6 +316,7 @@ impl<'a> Model<'a> {
             parameters: self.parameters(&found.at, errors.as_deref()),
             evidence: Vec::new(),
             support: None,
+            complexity: self.ranges(1.0).iter().flatten().count(),
             warnings: self.remarks(&found.at),
         }
     }

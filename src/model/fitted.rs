@@ -4,10 +4,10 @@ use crate::diag::{Diagnostic, Outcome};
 use crate::maths::sum::{par_sum, sum};
 use crate::proxies::ProxyStack;
 use crate::records::{Blocks, Training};
-use crate::units::Metres;
+use crate::units::{Metres, Seed};
 
-use super::settings::{CandidateKind, CandidatePlan};
-use super::{access, density};
+use super::settings::{CandidateKind, CandidatePlan, Fit};
+use super::{access, blend, density, remainder};
 
 /// A parameter of a candidate.
 #[derive(Debug, Clone, PartialEq)]
@@ -45,15 +45,11 @@ pub struct Fitted {
     pub evidence: Vec<Evidence>,
     /// Effective number of distinct places that carry each cell's weight; `None`: all of them.
     pub support: Option<Vec<f64>>,
+    /// How many parameters were fitted, those of a blend's members included: what "simpler" means
+    /// between candidates.
+    pub complexity: usize,
     /// What deserves attention.
     pub warnings: Vec<Diagnostic>,
-}
-
-impl Fitted {
-    /// How many parameters were fitted: what "simpler" means between candidates.
-    pub fn complexity(&self) -> usize {
-        self.parameters.iter().filter(|p| p.fitted).count()
-    }
 }
 
 /// What a fit needs beside training records and layers.
@@ -63,6 +59,10 @@ pub struct Context<'a> {
     pub floor: f64,
     /// Blocks behind the parameters' intervals; `None`: no intervals are wanted.
     pub blocks: Option<&'a Blocks>,
+    /// All candidates of the plan, for a blend to find its members.
+    pub candidates: &'a [CandidatePlan],
+    /// Seed of the inner folds.
+    pub seed: Seed,
 }
 
 /// Fits one candidate to training records.
@@ -78,9 +78,15 @@ pub fn fit(
 ) -> Outcome<Fitted> {
     match &plan.kind {
         CandidateKind::Uniform => Ok(uniform(training)),
+        CandidateKind::Blend(members) => blend::fit(&plan.name, members, training, layers, context),
         CandidateKind::Density(density) => density::fit(&plan.name, density, training, context),
-        CandidateKind::Uses { terms, base } => {
-            access::fit(&access::Asked { name: &plan.name, terms, base: *base }, training, layers, context)
+        CandidateKind::Uses { terms, base, remainder } => {
+            let asked = access::Asked { name: &plan.name, terms, base: *base };
+            let fitted = access::fit(&asked, training, layers, context)?;
+            match remainder {
+                None => Ok(fitted),
+                Some(bandwidth) => remainder::add(&plan.name, fitted, *bandwidth, training),
+            }
         }
     }
 }
@@ -91,9 +97,15 @@ pub fn fit(
 /// When a layer is constant or has values its curve cannot take, or a bandwidth is below half a cell.
 pub fn examine(plan: &CandidatePlan, layers: &ProxyStack, cell: Metres) -> Outcome<()> {
     match &plan.kind {
-        CandidateKind::Uniform => Ok(()),
+        CandidateKind::Uniform | CandidateKind::Blend(_) => Ok(()),
         CandidateKind::Density(density) => density::examine(&plan.name, density, cell),
-        CandidateKind::Uses { terms, .. } => access::examine(&plan.name, terms, layers),
+        CandidateKind::Uses { terms, remainder, .. } => {
+            if let Some(Fit::Given(length)) = remainder {
+                let given = length.metres(cell).expect("the plan refuses degrees");
+                density::refuse_small(&format!("candidate `{}`, remainder", plan.name), given, cell)?;
+            }
+            access::examine(&plan.name, terms, layers)
+        }
     }
 }
 
@@ -104,6 +116,7 @@ fn uniform(training: &Training) -> Fitted {
         parameters: Vec::new(),
         evidence: Vec::new(),
         support: None,
+        complexity: 0,
         warnings: Vec::new(),
     }
 }

@@ -3,9 +3,12 @@
 //! Never sees held-out records.
 
 mod access;
+mod blend;
 mod density;
 mod fitted;
+mod groups;
 mod lattice;
+mod remainder;
 mod settings;
 mod terms;
 

@@ -78,7 +78,11 @@ pub enum CandidateKind {
         terms: Vec<TermPlan>,
         /// Share of effort spread evenly.
         base: Fit<Share>,
+        /// Kernel of the smooth field over what the layers leave unexplained.
+        remainder: Option<Fit<Length>>,
     },
+    /// A mixture of other candidates' surfaces, by name.
+    Blend(Vec<String>),
     /// No effort pattern at all.
     Uniform,
 }

@@ -79,7 +79,7 @@ fn candidate(c: &CandidateFinding, s: &Standing) -> Value {
             "boyce": estimate(&s.scores[2]), "calibration_slope": estimate(&s.scores[3]),
         },
         "versus_best": {"log_score": estimate(&s.versus_best), "distinguishable": s.distinguishable},
-        "fitted_parameters": c.fitted.complexity(), "evidence": evidence,
+        "fitted_parameters": c.fitted.complexity, "evidence": evidence,
     })
 }
 

@@ -60,7 +60,7 @@ pub fn comparison_csv(finding: &Finding) -> String {
     standings.sort_by_key(|s| s.rank);
     for s in standings {
         let c = &finding.candidates[s.candidate];
-        out += &format!("{},{},{}", s.rank, c.name, c.fitted.complexity());
+        out += &format!("{},{},{}", s.rank, c.name, c.fitted.complexity);
         for e in s.scores.iter().chain([&s.versus_best]) {
             let ends = [e.value, e.interval.map(|i| i.0), e.interval.map(|i| i.1)];
             out += &format!(",{}", ends.map(number).join(","));

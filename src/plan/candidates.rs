@@ -24,12 +24,13 @@ const RESERVED: [(&str, &str); 2] =
 pub(super) fn read(log: &mut Log, table: &Table, layers: &[Known]) -> Option<CandidatePlan> {
     check_name(log, table);
     check_kind(log, table);
-    open_remainder(log, table);
+    let remainder = remainder(log, table);
     let density = density(log, table);
     let uses = uses(log, table, layers);
-    let kind = match (density, uses) {
-        (Some(density), None) => CandidateKind::Density(density),
-        (None, Some(terms)) => CandidateKind::Uses { terms, base: base(table)? },
+    let kind = match (density, uses, blend(log, table)) {
+        (Some(density), None, None) => CandidateKind::Density(density),
+        (None, Some(terms), None) => CandidateKind::Uses { terms, base: base(table)?, remainder },
+        (None, None, Some(members)) => CandidateKind::Blend(members),
         _ => return None,
     };
     Some(CandidatePlan { name: table.string("name")?, kind })
@@ -63,28 +64,47 @@ fn check_kind(log: &mut Log, table: &Table) {
     }
 }
 
-fn open_remainder(log: &mut Log, table: &Table) {
-    let remainder =
-        table.item("remainder").and_then(|item| Table::open(log, "candidate.remainder", item.value));
-    if let Some(item) = remainder.as_ref().and_then(|remainder| remainder.item("bandwidth")) {
-        Table::open(log, "candidate.remainder.bandwidth", item.value);
+/// The kernel of the remainder, where one is asked for.
+fn remainder(log: &mut Log, table: &Table) -> Option<Fit<Length>> {
+    let table = Table::open(log, "candidate.remainder", table.item("remainder")?.value)?;
+    width(log, &table, "candidate.remainder.bandwidth")
+}
+
+/// A bandwidth: a length, or `"fit"`, which is the default.
+fn width(log: &mut Log, table: &Table, section: &'static str) -> Option<Fit<Length>> {
+    let Some(item) = table.item("bandwidth") else { return Some(Fit::Fitted) };
+    if Table::open(log, section, item.value).is_some() {
+        let cure = "write a length or `\"fit\"`";
+        not_supported(log, &item.span(), "a `bandwidth` that varies over the region", cure);
+    }
+    match item.text()? {
+        "fit" => Some(Fit::Fitted),
+        text => Length::parse(text).ok().map(Fit::Given),
     }
 }
 
 fn density(log: &mut Log, table: &Table) -> Option<DensityPlan> {
     let table = Table::open(log, "candidate.density", table.item("density")?.value)?;
-    let Some(item) = table.item("bandwidth") else {
-        return Some(DensityPlan { bandwidth: Fit::Fitted });
-    };
-    if Table::open(log, "candidate.density.bandwidth", item.value).is_some() {
-        let cure = "write a length or `\"fit\"`";
-        not_supported(log, &item.span(), "a `bandwidth` that varies over the region", cure);
+    width(log, &table, "candidate.density.bandwidth").map(|bandwidth| DensityPlan { bandwidth })
+}
+
+/// The candidates of a mixture; whether they exist is checked once all are known.
+fn blend(log: &mut Log, table: &Table) -> Option<Vec<String>> {
+    let item = table.item("blend")?;
+    let mut members: Vec<String> = Vec::new();
+    for element in elements(item) {
+        let named = element.text().unwrap_or_default();
+        if members.iter().any(|m| m == named) {
+            let text = format!("the blend names `{named}` twice");
+            log.say(&element.span(), "duplicate_name", text, "name each candidate once");
+        }
+        members.push(named.to_owned());
     }
-    let bandwidth = match item.text()? {
-        "fit" => Fit::Fitted,
-        text => Fit::Given(Length::parse(text).ok()?),
-    };
-    Some(DensityPlan { bandwidth })
+    if members.len() == 1 {
+        let text = "a blend of one candidate is that candidate";
+        log.say(&item.span(), "out_of_range", text, "name at least two candidates");
+    }
+    Some(members)
 }
 
 fn base(table: &Table) -> Option<Fit<Share>> {

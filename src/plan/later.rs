@@ -13,11 +13,7 @@ pub(super) fn refuse(log: &mut Log, known: &Key, item: &Item) {
     match known.since {
         Since::Later if belongs_to_later_measure(known) => {} // its measure is refused, once
         Since::Later => {
-            let cure = match item.key {
-                "blend" => "remove this candidate".to_string(), // nothing of it would be left
-                key => format!("remove `{key}`"),
-            };
-            not_supported(log, &item.at, &format!("`{}`", item.key), &cure);
+            not_supported(log, &item.at, &format!("`{}`", item.key), &format!("remove `{}`", item.key));
         }
         Since::Only(value) => refuse_others(log, item, value),
         Since::Now => refuse_words(log, known, item),
@@ -32,8 +28,7 @@ pub(super) fn not_supported(log: &mut Log, span: &Span, what: &str, cure: &str) 
 
 fn belongs_to_later_measure(known: &Key) -> bool {
     known.section.starts_with("layer")
-        || known.section.starts_with("candidate.remainder")
-        || known.section == "candidate.density.bandwidth"
+        || matches!(known.section, "candidate.density.bandwidth" | "candidate.remainder.bandwidth")
         || known.section == "environment"
 }
 

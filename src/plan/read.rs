@@ -173,7 +173,7 @@ mod tests {
         assert_eq!(plan.layers[0].measure, Measure::Distance);
         assert_eq!(plan.layers[0].filter.as_deref(), Some("class IN ('primary','secondary')"));
         assert_eq!((plan.layers[1].resample, plan.layers[1].missing), (Resample::Sum, Some(0.0)));
-        let CandidateKind::Uses { terms, base } = &plan.candidates[1].kind else { panic!() };
+        let CandidateKind::Uses { terms, base, .. } = &plan.candidates[1].kind else { panic!() };
         assert_eq!(*base, Fit::Given(Share::new(0.0).unwrap()));
         assert_eq!(
             (terms[0].form, &terms[0].parameters[..]),

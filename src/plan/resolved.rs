@@ -123,9 +123,18 @@ fn candidate(plan: &CandidatePlan) -> Table {
             put(&mut kernel, "edges", "renormalise");
             put(&mut table, "density", kernel);
         }
-        CandidateKind::Uses { terms, base } => {
+        CandidateKind::Uses { terms, base, remainder } => {
             put(&mut table, "uses", terms.iter().map(term).collect::<Table>());
             put(&mut table, "base", fit(*base, |share| share.get().into()));
+            if let Some(bandwidth) = remainder {
+                let mut field = Table::new();
+                put(&mut field, "bandwidth", fit(*bandwidth, |length| exactly(length).into()));
+                put(&mut table, "remainder", field);
+            }
+        }
+        CandidateKind::Blend(members) => {
+            let names = members.iter().map(|m| Value::from(m.as_str())).collect::<Vec<_>>();
+            table.insert("blend".into(), Value::Array(names));
         }
         CandidateKind::Uniform => {}
     }

@@ -64,6 +64,22 @@ impl Training {
         crate::maths::sum::sum(self.units.iter().map(|u| u.weight))
     }
 
+    /// Deals the units out once more, by outings (places where there are none), for what is tuned: each
+    /// inner training part with the units left out of it. Nothing held out is touched.
+    pub fn inner(&self, folds: usize, seed: Seed) -> Vec<(Self, Vec<Unit>)> {
+        let group = |u: &Unit| if self.outings { u.outing } else { u.cell };
+        let groups = self.units.iter().map(group).max().map_or(0, |m| m as usize + 1);
+        let mut weights = vec![0.0; groups];
+        self.units.iter().for_each(|u| weights[group(u) as usize] += u.weight);
+        let of_group = balance(&weights, folds, &mut Stream::new(seed, "inner folds", 0));
+        let part = |fold: usize| {
+            let (left_out, units): (Vec<Unit>, Vec<Unit>) =
+                self.units.iter().partition(|u| usize::from(of_group[group(u) as usize]) == fold);
+            (Self { units, ..self.clone() }, left_out)
+        };
+        (0..folds).map(part).filter(|(t, l)| !l.is_empty() && t.units.len() > 1).collect()
+    }
+
     /// The cells that hold units, with the weight of the units in each, in the region's order.
     pub fn places(&self) -> Vec<(usize, f64)> {
         let mut units: Vec<(u32, f64)> = self.units.iter().map(|u| (u.cell, u.weight)).collect();

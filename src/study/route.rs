@@ -51,7 +51,7 @@ pub fn run(
         let steps = folds.count as u64 + 1;
         needs.observer.begin(&format!("fit and check {}", candidate.name), Some(steps));
         let all = Training::all(&records, region.clone());
-        let whole = Context { floor, blocks: Some(&blocks) };
+        let whole = Context { floor, blocks: Some(&blocks), candidates: &plan.candidates, seed: plan.seed };
         let fitted =
             notes.stage(format!("fit {}", candidate.name), |_| fit(candidate, &all, &layers, whole))?;
         needs.observer.advance(1);
@@ -61,7 +61,7 @@ pub fn run(
             layers: &layers,
             blocks: &blocks,
             folds: &folds,
-            floor,
+            context: Context { blocks: None, ..whole },
         };
         let scores = notes.stage(format!("check {}", candidate.name), |_| {
             work.check(candidate, &mut || needs.observer.advance(1))
@@ -78,7 +78,7 @@ pub fn run(
         needs.observer.end();
     }
     let verdict = notes.stage("compare", |_| {
-        let complexity: Vec<usize> = candidates.iter().map(|c| c.fitted.complexity()).collect();
+        let complexity: Vec<usize> = candidates.iter().map(|c| c.fitted.complexity).collect();
         let scores: Vec<&CandidateScores> = candidates.iter().map(|c| &c.scores).collect();
         judge(&scores, &complexity, plan.holdout.resamples, plan.seed)
     });
@@ -149,7 +149,7 @@ struct Work<'a> {
     layers: &'a ProxyStack,
     blocks: &'a Blocks,
     folds: &'a Folds,
-    floor: f64,
+    context: Context<'a>,
 }
 
 impl Work<'_> {
@@ -159,9 +159,8 @@ impl Work<'_> {
         let mut parts: Vec<HeldOut> = Vec::new();
         for fold in 0..self.folds.count {
             let (training, held) = self.folds.part(fold, self.records, self.region);
-            let context = Context { floor: self.floor, blocks: None };
-            let fitted: Fitted = fit(candidate, &training, self.layers, context)?;
-            surfaces.push(with_floor(&fitted.density, self.floor));
+            let fitted: Fitted = fit(candidate, &training, self.layers, self.context)?;
+            surfaces.push(with_floor(&fitted.density, self.context.floor));
             parts.push(held);
             done();
         }
