@@ -39,21 +39,33 @@ fn candidate(f: &Finding, c: &CandidateFinding, delivered: bool) -> Value {
     let criteria: Vec<Value> =
         c.fitted.evidence.iter().filter(|e| e.tried.len() > 1).filter_map(|e| criterion(c, e)).collect();
     context! {
-        name => words::name(&c.name), delivered, made_of => made_of(c), curves, criteria, parameters,
+        name => words::name(&c.name), delivered, made_of => made_of(f, c), curves, criteria, parameters,
     }
 }
 
 /// A candidate's make in one phrase.
-fn made_of(c: &CandidateFinding) -> String {
+fn made_of(f: &Finding, c: &CandidateFinding) -> String {
     match &c.kind {
         CandidateKind::Uniform => "no pattern at all".into(),
         CandidateKind::Density(_) => {
             "where the records are, smoothed with a Gaussian kernel that keeps each one's whole weight inside the region".into()
         }
-        CandidateKind::Uses { terms, .. } => {
+        CandidateKind::Uses { terms, remainder, .. } => {
             let parts: Vec<String> =
                 terms.iter().map(|t| format!("{} ({})", words::name(&t.layer), form_words(t.form))).collect();
-            format!("curves over {}, multiplied, and an even share beside them", words::list(&parts))
+            let curves = match parts.as_slice() {
+                [one] => format!("a curve over {one}, and an even share beside it"),
+                _ => format!("curves over {}, multiplied, and an even share beside them", words::list(&parts)),
+            };
+            let field = "; all multiplied by a smooth field of what the layers leave unexplained";
+            if remainder.is_some() { format!("{curves}{field}") } else { curves }
+        }
+        CandidateKind::Blend(members) => {
+            let members: Vec<String> = members.iter().map(|m| format!("“{}”", words::name(m))).collect();
+            format!(
+                "a mixture of {}, its weights learned on {} left out of their fits",
+                words::list(&members), words::nouns(f.records.count).1,
+            )
         }
     }
 }
@@ -116,7 +128,20 @@ fn of_candidate(name: &str) -> (Written, String, String) {
             String::new(),
             "share of effort that no layer explains, spread evenly over the area".into(),
         ),
-        _ => (Written::Number, String::new(), String::new()),
+        "remainder.bandwidth" => (
+            Written::Length,
+            String::new(),
+            "standard deviation along each axis of the field of what the layers leave unexplained".into(),
+        ),
+        "remainder.strength" => (
+            Written::Number,
+            String::new(),
+            "how much evidence it takes to move that field from 1: it counts as much as so many units".into(),
+        ),
+        _ => match name.strip_prefix("weight.") {
+            Some(member) => (Written::Share, String::new(), format!("part of “{}” in the mixture", words::name(member))),
+            None => (Written::Number, String::new(), String::new()),
+        },
     }
 }
 
@@ -150,8 +175,8 @@ fn of_layer(
         }
         (CurveForm::FallingPower, _) => plain("how steeply it falls off far away".into()),
         (CurveForm::RisingPower, "exponent") => {
-            let factor = words::times(float::pow(2.0, value));
-            plain(format!("twice as much {quoted} goes with {factor} times what the curve adds"))
+            let factor = words::digits(float::pow(2.0, value), 3);
+            plain(format!("where {quoted} doubles, what the curve adds is multiplied by {factor}"))
         }
         (CurveForm::RisingPower, _) => {
             let unit =
@@ -196,7 +221,7 @@ fn across(classes: &[OddsBin], unit: f64) -> Axis {
     let place = (middle - low) / (high - low);
     let smallest = classes.iter().map(|c| c.to).find(|v| *v > 0.0).unwrap_or(1.0);
     let shape = match () {
-        () if low < 0.0 || place > 0.25 || place.is_nan() => Shape::Linear,
+        () if classes.len() < 4 || low < 0.0 || place > 0.25 || place.is_nan() => Shape::Linear,
         () if place > 0.02 => Shape::Root,
         () => Shape::Shifted(smallest.max(high * 1e-4)),
     };

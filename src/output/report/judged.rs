@@ -24,7 +24,7 @@ fn named(f: &Finding, candidate: usize) -> String {
 }
 
 fn parameters(f: &Finding, candidate: usize) -> String {
-    match f.candidates[candidate].fitted.complexity() {
+    match f.candidates[candidate].fitted.complexity {
         0 => "none".into(),
         n => words::count(n as u64),
     }
@@ -186,11 +186,16 @@ pub(super) fn table(f: &Finding) -> Value {
                 (_, false) => "not distinguishable from the best",
                 (_, true) => "worse than the best",
             };
+            let difference = if s.rank == 1 {
+                context! { value => "–", interval => "" }
+            } else {
+                context! { value => words::value(&s.versus_best, 3), interval => words::interval(&s.versus_best, 3) }
+            };
             context! {
                 rank => s.rank, name => named(f, s.candidate), delivered => s.candidate == f.delivered,
                 recommended => s.candidate == f.verdict.chosen, log => score(0, 3), auc => score(1, 3),
                 boyce => score(2, 2), slope => score(3, 2), standing, factor => factor(&s.scores[0]),
-                difference => if s.rank == 1 { "–".into() } else { words::both(&s.versus_best, 3) },
+                difference,
                 parameters => parameters(f, s.candidate),
             }
         })

@@ -3,7 +3,7 @@
 use minijinja::{Value, context};
 
 use crate::check::Split;
-use crate::model::{CandidateKind, CurveForm};
+use crate::model::{CandidateKind, CurveForm, TermPlan};
 use crate::output::finding::{CandidateFinding, Finding};
 use crate::output::settings::{Per, Scale};
 use crate::records::Count;
@@ -16,11 +16,13 @@ enum Work {
     Berman,
     Boyce,
     Buckland,
+    Clayton,
     Efron,
     Hirzel,
     Jones,
     Liang,
     Phillips,
+    Smyth,
     Warton2010,
     Warton2013,
 }
@@ -38,6 +40,9 @@ impl Work {
             Self::Buckland => {
                 "Buckland, S. T., Anderson, D. R., Burnham, K. P., Laake, J. L., Borchers, D. L. & Thomas, L. (2001) Introduction to Distance Sampling. Oxford University Press."
             }
+            Self::Clayton => {
+                "Clayton, D. & Kaldor, J. (1987) Empirical Bayes estimates of age-standardized relative risks for use in disease mapping. Biometrics 43, 671–681."
+            }
             Self::Efron => {
                 "Efron, B. & Tibshirani, R. J. (1993) An Introduction to the Bootstrap. Chapman & Hall."
             }
@@ -52,6 +57,9 @@ impl Work {
             }
             Self::Phillips => {
                 "Phillips, S. J., Dudík, M., Elith, J., Graham, C. H., Lehmann, A., Leathwick, J. & Ferrier, S. (2009) Sample selection bias and presence-only distribution models: implications for background and pseudo-absence data. Ecological Applications 19, 181–197."
+            }
+            Self::Smyth => {
+                "Smyth, P. & Wolpert, D. (1999) Linearly combining density estimators via stacking. Machine Learning 36, 59–83."
             }
             Self::Warton2010 => {
                 "Warton, D. I. & Shepherd, L. C. (2010) Poisson point process models solve the “pseudo-absence problem” for presence-only data in ecology. Annals of Applied Statistics 4, 1383–1402."
@@ -98,53 +106,99 @@ fn records(f: &Finding) -> String {
 }
 
 fn fitted(f: &Finding, c: &CandidateFinding, works: &mut Vec<Work>) -> String {
-    let value = |name: &str| c.fitted.parameters.iter().find(|p| p.name == name);
     match &c.kind {
         CandidateKind::Uniform => {
             "Effort was taken to be even over the region, as no pattern foretold held-out records better."
                 .into()
         }
-        CandidateKind::Density(_) => {
-            works.push(Work::Jones);
-            let bandwidth = value("bandwidth").map_or_else(String::new, |p| {
-                let how = if p.fitted { ", chosen by leaving out whole outings" } else { "" };
-                format!(" (standard deviation {} per axis{how})", words::length(p.value))
-            });
-            format!(
-                "Effort was estimated as a Gaussian kernel density{bandwidth}, corrected at the edges of the region so that each record keeps its whole weight inside (Jones 1993)."
-            )
-        }
-        CandidateKind::Uses { terms, .. } => {
-            works.extend([Work::Berman, Work::Warton2010, Work::Liang]);
-            if terms.iter().any(|t| t.form == CurveForm::HalfNormal) {
-                works.push(Work::Buckland);
-            }
-            let curves: Vec<String> = terms
-                .iter()
-                .map(|t| {
-                    let cited = if t.form == CurveForm::HalfNormal { "; Buckland et al. 2001" } else { "" };
-                    format!("{} ({}{cited})", words::name(&t.layer), super::explain::form_words(t.form))
-                })
-                .collect();
-            let found: Vec<String> =
-                c.fitted.parameters.iter().filter(|p| p.name != "base").map(|p| parameter(f, p)).collect();
-            let base = value("base").map_or_else(String::new, |p| {
-                format!(" beside an even share of {}", words::percent(p.value))
-            });
-            format!(
-                "Effort per unit of area was modelled as a product of curves over {}{base}, fitted by maximum likelihood as an inhomogeneous Poisson process over cells (Berman & Turner 1992; Warton & Shepherd 2010), with 95 % intervals from block-wise sandwich variances (Liang & Zeger 1986): {}.",
-                words::list(&curves),
-                found.join("; "),
-            )
+        CandidateKind::Density(_) => smoothed(c, works),
+        CandidateKind::Blend(members) => mixed(f, c, members, works),
+        CandidateKind::Uses { terms, remainder, .. } => {
+            let field = if remainder.is_some() {
+                works.push(Work::Clayton);
+                ", multiplied by a smooth field of observed over expected records, shrunk to 1 where there are few (after Clayton & Kaldor 1987)"
+            } else {
+                ""
+            };
+            curved(f, c, (terms, field), works)
         }
     }
 }
 
+fn value(c: &CandidateFinding, name: &str) -> Option<f64> {
+    c.fitted.parameters.iter().find(|p| p.name == name).map(|p| p.value)
+}
+
+fn smoothed(c: &CandidateFinding, works: &mut Vec<Work>) -> String {
+    works.push(Work::Jones);
+    let how = if c.fitted.complexity > 0 { ", chosen by leaving out whole outings" } else { "" };
+    let bandwidth = value(c, "bandwidth").map_or_else(String::new, words::length);
+    format!(
+        "Effort was estimated as a Gaussian kernel density (standard deviation {bandwidth} per axis{how}), corrected at the edges of the region so that each record keeps its whole weight inside (Jones 1993)."
+    )
+}
+
+fn mixed(f: &Finding, c: &CandidateFinding, members: &[String], works: &mut Vec<Work>) -> String {
+    works.push(Work::Smyth);
+    let shares: Vec<String> = members
+        .iter()
+        .map(|m| {
+            let share = value(c, &format!("weight.{m}")).unwrap_or(0.0);
+            format!("“{}” ({})", words::name(m), words::percent(share))
+        })
+        .collect();
+    let parts: Vec<String> = members
+        .iter()
+        .filter_map(|m| f.candidates.iter().find(|c| c.name == *m))
+        .map(|c| format!("“{}”: {}", words::name(&c.name), fitted(f, c, works)))
+        .collect();
+    format!(
+        "Effort was estimated as a mixture of {}, the shares learned on records left out of the members’ fits (Smyth & Wolpert 1999). {}",
+        words::list(&shares),
+        parts.join(" "),
+    )
+}
+
+fn curved(
+    f: &Finding,
+    c: &CandidateFinding,
+    (terms, field): (&[TermPlan], &str),
+    works: &mut Vec<Work>,
+) -> String {
+    works.extend([Work::Berman, Work::Warton2010, Work::Liang]);
+    let curves: Vec<String> = terms
+        .iter()
+        .map(|t| {
+            let cited = if t.form == CurveForm::HalfNormal {
+                works.push(Work::Buckland);
+                "; Buckland et al. 2001"
+            } else {
+                ""
+            };
+            format!("{} ({}{cited})", words::name(&t.layer), super::explain::form_words(t.form))
+        })
+        .collect();
+    let curves = match curves.as_slice() {
+        [one] => format!("a curve over {one}"),
+        _ => format!("a product of curves over {}", words::list(&curves)),
+    };
+    let found: Vec<String> =
+        c.fitted.parameters.iter().filter(|p| p.name != "base").map(|p| parameter(f, p)).collect();
+    let base = value(c, "base")
+        .map_or_else(String::new, |b| format!(" beside an even share of {}", words::percent(b)));
+    format!(
+        "Effort per unit of area was modelled as {curves}{base}, fitted by maximum likelihood as an inhomogeneous Poisson process over cells (Berman & Turner 1992; Warton & Shepherd 2010), with 95 % intervals from block-wise sandwich variances (Liang & Zeger 1986){field}: {}.",
+        found.join("; "),
+    )
+}
+
 fn parameter(f: &Finding, p: &crate::model::Parameter) -> String {
-    let length = p.name.ends_with(".scale")
-        && f.layers.0.iter().any(|l| {
-            l.measure == crate::proxies::Measure::Distance && p.name.strip_suffix(".scale") == Some(&l.name)
-        });
+    let length = p.name == "remainder.bandwidth"
+        || p.name.ends_with(".scale")
+            && f.layers.0.iter().any(|l| {
+                l.measure == crate::proxies::Measure::Distance
+                    && p.name.strip_suffix(".scale") == Some(&l.name)
+            });
     let write = |v: f64| if length { words::length(v) } else { words::digits(v, 3) };
     let interval = p.interval.map_or_else(String::new, |(l, h)| format!(" [{}, {}]", write(l), write(h)));
     format!("{} {}{interval}", words::name(&p.name), write(p.value))

@@ -17,7 +17,7 @@ mod plots;
 mod sample;
 mod words;
 
-use minijinja::{AutoEscape, Environment, UndefinedBehavior, Value, context, escape_formatter};
+use minijinja::{AutoEscape, Environment, HtmlEscape, UndefinedBehavior, Value, context, escape_formatter};
 
 use super::finding::Finding;
 use super::settings::{Per, Scale};
@@ -73,7 +73,7 @@ fn common(f: &Finding, page: &Page) -> Value {
         candidates => explain::candidates(f), count => f.candidates.len(),
         question => judged::question(f), table => judged::table(f), chart => judged::chart(f),
         folds => judged::folds(f), seed => f.seed.0, version => f.tool.version,
-        libraries => f.tool.libraries.as_str(), time => page.time.as_str(), plan => page.plan.as_str(),
+        libraries => f.tool.libraries.as_str(), time => words::name(&page.time), shown_time => words::time(&page.time), plan => page.plan.as_str(),
         command => page.command.as_str(), css => Value::from_safe_string(STYLE.into()),
     }
 }
@@ -146,6 +146,17 @@ fn usage(f: &Finding) -> Value {
     }
 }
 
+/// Escapes a message and shows what stands between its backticks as code.
+fn ticks(text: &str) -> Value {
+    let parts: Vec<String> = words::clean(text).split('`').map(|part| HtmlEscape(part).to_string()).collect();
+    let mut out = String::new();
+    for (i, part) in parts.iter().enumerate() {
+        let code = i % 2 == 1 && i + 1 < parts.len();
+        out += &if code { format!("<code>{part}</code>") } else { part.clone() };
+    }
+    Value::from_safe_string(out)
+}
+
 const STYLE: &str = include_str!("style.css");
 const TEMPLATES: [(&str, &str); 4] = [
     ("page.html", include_str!("page.html")),
@@ -159,6 +170,7 @@ fn render(name: &str, values: &Value) -> String {
     let mut templates = Environment::new();
     templates.set_undefined_behavior(UndefinedBehavior::Strict);
     templates.set_auto_escape_callback(|_| AutoEscape::Html);
+    templates.add_filter("ticks", ticks);
     templates.set_formatter(|out, state, value| match value.as_str() {
         Some(text) if !value.is_safe() => escape_formatter(out, state, &Value::from(words::clean(text))),
         _ => escape_formatter(out, state, value),

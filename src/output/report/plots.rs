@@ -65,8 +65,14 @@ pub(super) fn curve(c: &CurveChart) -> String {
         let even = [(c.across.low, 1.0), (c.across.high, 1.0)];
         chart.draw_series(DashedLineSeries::new(even, 4 * FINE, 4 * FINE, INK.stroke_width(FINE as u32)))?;
         for o in &c.observed {
-            let whole = [(o.class.0, o.whole.max(foot)), (o.class.1, o.whole.max(foot))];
-            chart.draw_series(LineSeries::new(whole, WHOLE.stroke_width(5 * FINE as u32)))?;
+            // a class of a single value still gets a dash that can be seen
+            let from = c.across.at((c.across.along(o.class.0).min(c.across.along(o.at) - 0.012)).max(0.0));
+            let to = c.across.at((c.across.along(o.class.1).max(c.across.along(o.at) + 0.012)).min(1.0));
+            let height = o.whole.max(foot);
+            chart.draw_series(LineSeries::new(
+                [(from, height), (to, height)],
+                WHOLE.stroke_width(5 * FINE as u32),
+            ))?;
         }
         chart.draw_series(LineSeries::new(c.line.iter().copied(), MODEL.stroke_width(2 * FINE as u32)))?;
         for o in &c.observed {

@@ -103,18 +103,19 @@ fn plans() -> Vec<CandidatePlan> {
     let mut half = term("main-roads", CurveForm::Exponential);
     half.parameters.truncate(1);
     let people = term("people", CurveForm::RisingPower);
-    let uses = |terms| CandidateKind::Uses { terms, base: Fit::Fitted };
+    let uses = |terms, remainder| CandidateKind::Uses { terms, base: Fit::Fitted, remainder };
     let named = |name: &str, kind| CandidatePlan { name: name.into(), kind };
     vec![
         named("recorded", CandidateKind::Density(DensityPlan { bandwidth: Fit::Fitted })),
-        named("access", uses(vec![half, people.clone()])),
-        named("crowd", uses(vec![people])),
+        named("access", uses(vec![half, people.clone()], Some(Fit::Fitted))),
+        named("crowd", uses(vec![people], None)),
+        named("mixed", CandidateKind::Blend(vec!["recorded".into(), "crowd".into()])),
         named("uniform", CandidateKind::Uniform),
     ]
 }
 
 fn candidate(plan: &CandidatePlan, all: &Study) -> CandidateFinding {
-    let context = Context { floor: 0.01, blocks: None };
+    let context = Context { floor: 0.01, blocks: None, candidates: &all.plans, seed: Seed(1) };
     let surfaces: Vec<Vec<f64>> = all
         .parts
         .iter()
@@ -147,6 +148,7 @@ struct Study {
     layers: ProxyStack,
     records: Records,
     blocks: Blocks,
+    plans: Vec<CandidatePlan>,
     parts: Vec<(Training, crate::records::HeldOut)>,
 }
 
@@ -159,9 +161,9 @@ pub(super) fn finding(columns: usize, rows: usize) -> Finding {
     let blocks = Blocks::lay(&region, side, &mut Stream::new(Seed(1), "blocks", 0));
     let folds = Folds::deal(&records, &blocks, Split::Outings, 3, Seed(1)).unwrap();
     let parts = (0..3).map(|k| folds.part(k, &records, &region)).collect();
-    let all = Study { region, layers, records, blocks, parts };
-    let candidates: Vec<CandidateFinding> = plans().iter().map(|p| candidate(p, &all)).collect();
-    let complexity: Vec<usize> = candidates.iter().map(|c| c.fitted.complexity()).collect();
+    let all = Study { region, layers, records, blocks, plans: plans(), parts };
+    let candidates: Vec<CandidateFinding> = all.plans.iter().map(|p| candidate(p, &all)).collect();
+    let complexity: Vec<usize> = candidates.iter().map(|c| c.fitted.complexity).collect();
     let scores: Vec<_> = candidates.iter().map(|c| &c.scores).collect();
     let verdict = judge(&scores, &complexity, 199, Seed(1));
     Finding {

@@ -56,6 +56,11 @@ pub(super) fn decimals(value: f64, digits: usize) -> String {
     out
 }
 
+/// A time in UTC, ISO 8601, easier on the eye.
+pub(super) fn time(iso: &str) -> String {
+    name(iso).replacen('T', " ", 1).replacen('Z', " UTC", 1)
+}
+
 /// A count.
 pub(super) fn count(value: u64) -> String {
     decimals(value as f64, 0)
@@ -109,7 +114,9 @@ pub(super) fn area(square_metres: f64) -> String {
 pub(super) fn percent(share: f64) -> String {
     let value = 100.0 * share;
     let places = usize::from(value < 10.0) + usize::from(value > 0.0 && value < 0.095);
-    format!("{} %", decimals(value, places))
+    let text = decimals(value, places);
+    let text = if text.contains('.') { text.trim_end_matches('0').trim_end_matches('.') } else { &text };
+    format!("{text} %")
 }
 
 /// How many times as much.
@@ -170,6 +177,8 @@ mod tests {
         assert_eq!(length(250.0), "250 m");
         assert_eq!(percent(0.4567), "46 %");
         assert_eq!(percent(0.0123), "1.2 %");
+        assert_eq!((percent(0.01), percent(0.0)), ("1 %".into(), "0 %".into()));
+        assert_eq!(time("2026-01-02T03:04:05Z"), "2026-01-02 03:04:05 UTC");
         assert_eq!(count(25_000), "25,000");
         assert_eq!(list(&["a".into(), "b".into(), "c".into()]), "a, b and c");
     }
