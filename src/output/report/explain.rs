@@ -20,11 +20,12 @@ pub(super) fn candidates(f: &Finding) -> Value {
     order
         .into_iter()
         .filter(|i| f.candidates[*i].kind != CandidateKind::Uniform)
-        .map(|i| candidate(f, &f.candidates[i], i == f.delivered))
+        .map(|i| candidate(f, i))
         .collect()
 }
 
-fn candidate(f: &Finding, c: &CandidateFinding, delivered: bool) -> Value {
+fn candidate(f: &Finding, i: usize) -> Value {
+    let c = &f.candidates[i];
     let parameters: Vec<Value> = c.fitted.parameters.iter().map(|p| parameter(f, c, p)).collect();
     let curves: Vec<Value> = c
         .odds
@@ -39,7 +40,7 @@ fn candidate(f: &Finding, c: &CandidateFinding, delivered: bool) -> Value {
     let criteria: Vec<Value> =
         c.fitted.evidence.iter().filter(|e| e.tried.len() > 1).filter_map(|e| criterion(c, e)).collect();
     context! {
-        name => words::name(&c.name), delivered, made_of => made_of(f, c), curves, criteria, parameters,
+        name => words::name(&c.name), delivered => i == f.delivered, recommended => i == f.verdict.chosen, made_of => made_of(f, c), curves, criteria, parameters,
     }
 }
 
@@ -217,6 +218,7 @@ fn shown_unit(layer: &Layer, high: f64) -> (f64, String) {
 /// How a layer is best stretched along an axis: distances and counts crowd near zero.
 fn across(classes: &[OddsBin], unit: f64) -> Axis {
     let (low, high) = (classes[0].from, classes[classes.len() - 1].to);
+    let low = if low > 0.0 && low < 0.05 * high { 0.0 } else { low };
     let middle = classes[classes.len() / 2].from;
     let place = (middle - low) / (high - low);
     let smallest = classes.iter().map(|c| c.to).find(|v| *v > 0.0).unwrap_or(1.0);
@@ -307,11 +309,15 @@ fn criterion(c: &CandidateFinding, e: &Evidence) -> Option<Value> {
     let (low, high) = (e.tried.first()?.0, e.tried.last()?.0);
     let (least, most) = e.tried.iter().fold((f64::MAX, f64::MIN), |(l, h), t| (l.min(t.1), h.max(t.1)));
     let (unit, divisor) = if high >= 3000.0 { ("km", 1000.0) } else { ("m", 1.0) };
+    let title = match e.parameter.as_str() {
+        "remainder.bandwidth" => "bandwidth of the remainder".to_owned(),
+        other => words::name(other),
+    };
     let room = ((most - least) * 0.06).max(1e-6);
     let chart = CriterionChart {
         across: Axis::new(Shape::Log, low, high, divisor, 7),
         up: Axis::new(Shape::Linear, least - room, most + room, 1.0, 5),
-        titles: (format!("{} ({unit})", words::name(&e.parameter)), "criterion (nats)".into()),
+        titles: (format!("{title} ({unit})"), "criterion (nats)".into()),
         tried: e.tried.clone(),
         chosen,
     };
@@ -328,7 +334,7 @@ fn criterion(c: &CandidateFinding, e: &Evidence) -> Option<Value> {
         words::length(chosen),
     );
     Some(context! {
-        parameter => words::name(&e.parameter), criterion => e.criterion, chosen => words::length(chosen), alt,
+        title, criterion => e.criterion, chosen => words::length(chosen), alt,
         rows, svg => plots::criterion(&chart),
     })
 }

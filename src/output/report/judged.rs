@@ -36,12 +36,13 @@ fn recommended(f: &Finding) -> String {
     let name = named(f, chosen);
     if chosen == best {
         return format!(
-            "“{name}” has the highest log score on held-out {}.",
+            "Of the {} candidates compared, it has the highest log score on held-out {}.",
+            f.candidates.len(),
             words::nouns(f.records.count).1
         );
     }
     format!(
-        "“{}” has the highest log score, but “{name}” can’t be told from it with these records and has fewer fitted parameters ({} against {}): it is the one to use.",
+        "“{}” has the highest log score, but “{name}” can’t be told from it with these records and has fewer fitted parameters ({} against {}), so it is the one to use.",
         named(f, best),
         parameters(f, chosen),
         parameters(f, best),

@@ -18,19 +18,25 @@ pub(super) struct Scale {
     pub low: f64,
     /// Value of the darkest colour.
     pub high: f64,
+    /// Largest value of all.
+    pub most: f64,
 }
 
 impl Scale {
-    /// A scale over all of these values; zeros and what is far below the rest share the lightest
-    /// colour, and an even surface gets a scale around its one value.
+    /// A scale over these values. Zeros and what is far below the rest share the lightest colour; a
+    /// thousandth of the cells may lie beyond the darkest, so that one peak does not take up the
+    /// colours of all others; an even surface gets a scale around its one value.
     pub(super) fn over<'a>(values: impl Iterator<Item = &'a f64>) -> Self {
-        let (low, high) =
-            values.fold((f64::MAX, 0.0_f64), |(l, h), v| (if *v > 0.0 { l.min(*v) } else { l }, h.max(*v)));
-        if high <= 0.0 {
-            return Self { low: 0.5, high: 2.0 };
+        let mut sorted: Vec<f64> = values.copied().filter(|v| *v > 0.0).collect();
+        sorted.sort_unstable_by(f64::total_cmp);
+        let Some(most) = sorted.last().copied() else { return Self { low: 0.5, high: 2.0, most: 0.0 } };
+        let bulk = sorted[(sorted.len() - 1) * 999 / 1000];
+        let high = if most > 2.0 * bulk { bulk } else { most };
+        let low = sorted[0].max(high * 1e-4);
+        if high / low < 1.5 {
+            return Self { low: low / 2.0, high: high * 2.0, most };
         }
-        let low = low.max(high * 1e-5);
-        if high / low < 1.5 { Self { low: low / 2.0, high: high * 2.0 } } else { Self { low, high } }
+        Self { low, high, most }
     }
 
     /// Place of a value on the scale, 0 to 1 inside.
@@ -215,7 +221,7 @@ mod tests {
         assert!(close(means[0], (1.0 + 4.0 + 5.0) / 3.0) && close(means[3], 12.5), "{means:?}");
         let small = Frame::new(&region, 1100);
         assert_eq!((small.block, small.zoom), (1, 275));
-        assert_eq!(small.picture(&values, Scale { low: 1.0, high: 15.0 }).width, 1100);
+        assert_eq!(small.picture(&values, Scale { low: 1.0, high: 15.0, most: 15.0 }).width, 1100);
     }
 
     #[test]
@@ -232,6 +238,20 @@ mod tests {
     fn scale_bars_are_round() {
         let (length, share) = scale_bar(&plane(300, 240, 500.0)).unwrap();
         assert_eq!((length, share), (50_000.0, 1.0 / 3.0));
+    }
+
+    #[test]
+    fn long_grids_have_maps() {
+        for (columns, rows) in [(1, 5000), (3000, 2), (1, 1)] {
+            let region = Region::new(plane(columns, rows, 30.0), &vec![true; columns * rows]);
+            let picture =
+                Frame::new(&region, 1100).picture(&vec![1.0; columns * rows], Scale::over([1.0].iter()));
+            assert!(picture.width.max(picture.height) <= 1100 && picture.width.min(picture.height) >= 1);
+            assert!(
+                Squares::over(region.grid()).of(columns - 1, rows - 1) < Squares::over(region.grid()).len()
+            );
+            assert!((0.4..=5.0).contains(&aspect(region.grid()).0));
+        }
     }
 
     #[test]

@@ -28,7 +28,7 @@ pub(super) fn of_report(f: &Finding) -> Value {
     let alt = format!(
         "Map of effort for each unit of area: from {} to {} times the even share, on a logarithmic scale; it is densest in the {}.",
         words::times(scale.low),
-        words::times(scale.high),
+        words::times(scale.most),
         part(f.region.grid(), densest(f, &density)),
     );
     let shown = told.iter().flatten().count();
@@ -152,7 +152,14 @@ fn legend(scale: Scale) -> Value {
             }
         })
         .collect();
-    context! { strip => Value::from_safe_string(strip()), ticks }
+    let beyond = (scale.most > scale.high).then(|| {
+        format!(
+            "The darkest colour stands for {}× and more, up to {}×.",
+            words::times(scale.high),
+            words::times(scale.most)
+        )
+    });
+    context! { strip => Value::from_safe_string(strip()), ticks, beyond }
 }
 
 /// Scale bar, extent and which way is up.

@@ -131,7 +131,7 @@ fn facts(f: &Finding, finished: &Finished) -> Vec<Value> {
     if support.is_finite() {
         out.push(fact(
             "Least support",
-            format!("{} distinct places behind a cell’s weight", words::digits(support, 3)),
+            format!("about {} distinct places behind a cell’s weight", words::count(support.floor() as u64)),
         ));
     }
     out
@@ -250,6 +250,30 @@ mod tests {
             assert!(!html.contains('\u{202e}') && !html.contains('\u{0}'));
             assert!(html.contains("&lt;script&gt;"));
             assert!(!html.contains(&"n".repeat(200)));
+        }
+    }
+
+    /// An even surface, zeros without a floor, values per area, a candidate the plan asks for.
+    #[test]
+    fn odd_findings_have_pages_too() {
+        let mut finding = sample::finding(60, 40);
+        let last = finding.candidates.len() - 1;
+        finding.surface.candidate = crate::output::settings::Choice::Named("uniform".into());
+        finding.delivered = last;
+        finding.surface.floor = crate::units::Share::new(0.0).unwrap();
+        finding.surface.per = Per::Km2;
+        finding.candidates[0].fitted.density[..500].fill(0.0);
+        finding.holdout.split = crate::check::Split::Blocks;
+        for standing in &mut finding.verdict.standings {
+            standing.scores.iter_mut().for_each(|s| s.interval = None);
+        }
+        let [page, other] = both(&finding);
+        assert!(page.contains("This surface is even") && page.contains("The plan asks for “uniform”"));
+        assert!(page.contains("multiply it by the area") && page.contains("sets no floor"));
+        finding.delivered = 0;
+        let third = both(&finding);
+        for page in [page, other].iter().chain(&third) {
+            assert!(!page.contains("NaN") && !page.contains(">inf"));
         }
     }
 

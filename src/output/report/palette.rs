@@ -36,7 +36,7 @@ pub(super) fn index(at: f64) -> u8 {
 
 /// Red, green and blue of all indices, for an image of indexed colours.
 pub(super) fn colours() -> Vec<u8> {
-    let mut out = vec![0, 0, 0, 0x80, 0x80, 0x80];
+    let mut out = vec![0, 0, 0, 0x9b, 0x98, 0x9d];
     for level in 0..LEVELS {
         let along = level as f64 / (LEVELS - 1) as f64 * (STOPS.len() - 1) as f64;
         let from = (along as usize).min(STOPS.len() - 2);
@@ -49,8 +49,8 @@ pub(super) fn colours() -> Vec<u8> {
     out
 }
 
-/// Opacity of the first indices: outside is clear, blank is a veil.
-pub(super) const OPACITY: [u8; 2] = [0, 0x48];
+/// Opacity of the first indices: outside is clear, so that the page's own grey shows.
+pub(super) const OPACITY: [u8; 2] = [0, 0xff];
 
 #[cfg(test)]
 mod tests {

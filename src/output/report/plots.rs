@@ -75,14 +75,15 @@ pub(super) fn curve(c: &CurveChart) -> String {
             ))?;
         }
         chart.draw_series(LineSeries::new(c.line.iter().copied(), MODEL.stroke_width(2 * FINE as u32)))?;
+        let size = if c.observed.len() > 12 { 3 } else { 4 } * FINE;
         for o in &c.observed {
             let (low, high) = (o.interval.0.max(foot), o.interval.1.max(foot));
             let thin = DATA.stroke_width(3 * FINE as u32 / 2);
             chart.draw_series(LineSeries::new([(o.at, low), (o.at, high)], thin))?;
             let point = (o.at, o.ratio.max(foot));
             let fill = if o.ratio > 0.0 { DATA } else { PAPER };
-            chart.draw_series([Circle::new(point, 4 * FINE, fill.filled())])?;
-            chart.draw_series([Circle::new(point, 4 * FINE, thin)])?;
+            chart.draw_series([Circle::new(point, size, fill.filled())])?;
+            chart.draw_series([Circle::new(point, size, thin)])?;
         }
         Ok(())
     })

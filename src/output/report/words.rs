@@ -99,15 +99,15 @@ fn raised(c: char) -> char {
 /// A length in metres, as metres or kilometres.
 pub(super) fn length(metres: f64) -> String {
     if metres.abs() >= 1000.0 {
-        format!("{} km", digits(metres / 1000.0, 3))
+        format!("{}\u{a0}km", digits(metres / 1000.0, 3))
     } else {
-        format!("{} m", digits(metres, 3))
+        format!("{}\u{a0}m", digits(metres, 3))
     }
 }
 
 /// An area in m², as km².
 pub(super) fn area(square_metres: f64) -> String {
-    format!("{} km²", digits(square_metres / 1e6, 4))
+    format!("{}\u{a0}km²", digits(square_metres / 1e6, 4))
 }
 
 /// A share as a percentage.
@@ -116,7 +116,7 @@ pub(super) fn percent(share: f64) -> String {
     let places = usize::from(value < 10.0) + usize::from(value > 0.0 && value < 0.095);
     let text = decimals(value, places);
     let text = if text.contains('.') { text.trim_end_matches('0').trim_end_matches('.') } else { &text };
-    format!("{text} %")
+    format!("{text}\u{a0}%")
 }
 
 /// How many times as much.
@@ -173,11 +173,11 @@ mod tests {
         assert_eq!(digits(12.0, 3), "12");
         assert_eq!(digits(3.2e-9, 2), "3.2 × 10⁻⁹");
         assert_eq!(digits(9.999, 2), "10");
-        assert_eq!(length(12_345.0), "12.3 km");
-        assert_eq!(length(250.0), "250 m");
-        assert_eq!(percent(0.4567), "46 %");
-        assert_eq!(percent(0.0123), "1.2 %");
-        assert_eq!((percent(0.01), percent(0.0)), ("1 %".into(), "0 %".into()));
+        assert_eq!(length(12_345.0), "12.3\u{a0}km");
+        assert_eq!(length(250.0), "250\u{a0}m");
+        assert_eq!(percent(0.4567), "46\u{a0}%");
+        assert_eq!(percent(0.0123), "1.2\u{a0}%");
+        assert_eq!((percent(0.01), percent(0.0)), ("1\u{a0}%".into(), "0\u{a0}%".into()));
         assert_eq!(time("2026-01-02T03:04:05Z"), "2026-01-02 03:04:05 UTC");
         assert_eq!(count(25_000), "25,000");
         assert_eq!(list(&["a".into(), "b".into(), "c".into()]), "a, b and c");
