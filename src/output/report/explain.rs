@@ -294,7 +294,8 @@ fn curve_figure(f: &Finding, c: &CandidateFinding, s: &Shown) -> Value {
 }
 
 fn row(total: f64, class: &OddsBin, o: &Observed, divisor: f64) -> Value {
-    let number = |v: f64| words::digits(v / divisor, 3);
+    // a distance far below a metre in a kilometre is none
+    let number = |v: f64| words::digits(if divisor > 1.0 && v < 1.0 { 0.0 } else { v / divisor }, 3);
     context! {
         class => if class.from == class.to { number(class.from) } else { format!("{} to {}", number(class.from), number(class.to)) },
         area => words::percent(class.area_share), units => words::weight(class.units),
