@@ -1,5 +1,7 @@
 //! Bad plans: what is said of them, and where; and the reference of their keys.
 
+#![allow(clippy::disallowed_methods, reason = "writes the reference when asked to")]
+
 use trodden::diag::{Diagnostic, Fault};
 use trodden::plan::{read, reference};
 

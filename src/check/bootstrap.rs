@@ -29,8 +29,8 @@ impl Resamples {
     }
 
     /// A statistic of each resample, given how often each block is drawn.
-    pub fn each<T: Send>(&self, statistic: impl Fn(&[u16]) -> T + Sync) -> Vec<T> {
-        self.drawn.par_chunks(self.blocks.max(1)).map(|drawn| statistic(drawn)).collect()
+    pub fn each<T: Send>(&self, statistic: impl Fn(&[u16]) -> T + Sync + Send) -> Vec<T> {
+        self.drawn.par_chunks(self.blocks.max(1)).map(statistic).collect()
     }
 }
 

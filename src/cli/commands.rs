@@ -7,8 +7,8 @@ use serde_json::Value;
 use trodden::diag::{Diagnostic, Outcome, Warnings};
 use trodden::gate::{Files, Staging};
 use trodden::output::{
-    Checked, Finding, Page, Tool, check_json, comparison_csv, comparison_json, effort_json, finish,
-    held_out_csv,
+    Checked, CheckedInput, Finding, Page, Tool, check_json, comparison_csv, comparison_json, effort_json,
+    finish, held_out_csv,
 };
 use trodden::plan::{StudyPlan, read, resolved};
 use trodden::records::{Rule, Sink};
@@ -71,7 +71,11 @@ impl Sink for Nowhere {
 
 /// `trodden check`.
 pub fn check(args: &CheckArgs, common: &Common, voice: Voice) -> Outcome<()> {
-    let opened = open(&args.plan)?;
+    let opened = open(&args.plan).inspect_err(|problems| {
+        if common.json {
+            result(&pretty(&check_json(&Checked { problems: problems.0.clone(), ..Checked::default() })));
+        }
+    })?;
     let plan = &opened.plan;
     let files = Files::new(&opened.folder);
     let bars = Bars::new(voice.shows_progress());
@@ -86,7 +90,7 @@ pub fn check(args: &CheckArgs, common: &Common, voice: Voice) -> Outcome<()> {
         .map(|l| (l.file.as_str(), l.table.as_deref()))
         .chain(plan.records.files.iter().map(|f| (f.as_str(), plan.records.table.as_deref())))
         .filter_map(|(file, table)| trodden::gate::Sources::peek(&files, file, table).ok())
-        .map(|p| (p.file, p.kind, p.crs, p.extent, p.count))
+        .map(|p| CheckedInput { file: p.file, kind: p.kind, crs: p.crs, extent: p.extent, count: p.count })
         .collect();
     let (problems, records) = match &outcome {
         Ok(g) => (Vec::new(), Some(g.records.ledger.lines())),

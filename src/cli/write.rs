@@ -9,8 +9,8 @@ use trodden::diag::{Diagnostic, Outcome};
 use trodden::gate::{Band, InputFile, Staging, write_geotiff};
 use trodden::grid::Field;
 use trodden::output::{
-    CandidateFinding, Checked, Compress, FileDigest, Finding, Finished, Manifest, Stage, finish,
-    held_out_units_csv, kept_csv, manifest_json,
+    CandidateFinding, Checked, CheckedInput, Compress, FileDigest, Finding, Finished, Manifest, Stage,
+    finish, held_out_units_csv, kept_csv, manifest_json,
 };
 use trodden::plan::StudyPlan;
 use trodden::records::{Rule, Sink};
@@ -292,7 +292,7 @@ pub fn check_words(name: &str, plan: &StudyPlan, checked: &Checked, ledger: Opti
             g.metric().word()
         ));
     }
-    for (file, kind, crs, _, count) in &checked.inputs {
+    for CheckedInput { file, kind, crs, count, .. } in &checked.inputs {
         let count = count.map_or(String::new(), |n| {
             format!(", {n} {}", if *kind == "raster" { "cells" } else { "features" })
         });

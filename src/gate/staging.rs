@@ -1,7 +1,7 @@
 //! Outputs appear whole or not at all: written in a hidden folder beside their targets, synced,
 //! then moved into place one after another.
 
-use std::collections::BTreeSet;
+use std::collections::BTreeMap;
 use std::fs::{self, File};
 use std::path::{Path, PathBuf};
 use std::sync::Mutex;
@@ -11,14 +11,20 @@ use crate::diag::{Diagnostic, Outcome};
 /// Prefix of the hidden folders.
 const PREFIX: &str = ".trodden-";
 
-/// Folders to clear when the run is interrupted. Held while files are moved into place, so that an
+/// Hidden folders to clear when the run is interrupted, each with the folders made for it. Held while files are moved into place, so that an
 /// interruption waits for the move to end.
-static OPEN: Mutex<BTreeSet<PathBuf>> = Mutex::new(BTreeSet::new());
+static OPEN: Mutex<BTreeMap<PathBuf, Vec<PathBuf>>> = Mutex::new(BTreeMap::new());
 
 /// Removes every unfinished output; called when the run is interrupted.
 pub fn clear_all() {
     let open = OPEN.lock().unwrap_or_else(std::sync::PoisonError::into_inner);
-    open.iter().for_each(|folder| drop(fs::remove_dir_all(folder)));
+    open.iter().for_each(|(hidden, made)| clear(hidden, made));
+}
+
+/// Removes a hidden folder, and those made for it that hold nothing else.
+fn clear(hidden: &Path, made: &[PathBuf]) {
+    drop(fs::remove_dir_all(hidden));
+    made.iter().for_each(|folder| drop(fs::remove_dir(folder)));
 }
 
 /// Outputs on their way into a folder.
@@ -53,7 +59,7 @@ impl Staging {
         clear_stale(target);
         let hidden = target.join(format!("{PREFIX}{}", std::process::id()));
         fs::create_dir_all(&hidden).map_err(refused)?;
-        OPEN.lock().unwrap_or_else(std::sync::PoisonError::into_inner).insert(hidden.clone());
+        OPEN.lock().unwrap_or_else(std::sync::PoisonError::into_inner).insert(hidden.clone(), made.clone());
         Ok(Self { target: target.to_owned(), hidden, made, names: Vec::new() })
     }
 
@@ -69,6 +75,7 @@ impl Staging {
     ///
     /// # Errors
     /// When the disk does not take it.
+    #[allow(clippy::disallowed_methods, reason = "this is the atomic writer")]
     pub fn write(&mut self, name: &str, bytes: &[u8]) -> Outcome<()> {
         let path = self.path(name);
         fs::write(path, bytes).map_err(|e| self.failed(name, &e).into())
@@ -83,12 +90,19 @@ impl Staging {
     ///
     /// # Errors
     /// When the disk does not take them.
-    #[allow(clippy::disallowed_methods, reason = "this is the atomic writer")]
     pub fn commit(mut self) -> Outcome<Vec<PathBuf>> {
         for name in &self.names {
             File::open(self.hidden.join(name))
                 .and_then(|f| f.sync_all())
                 .map_err(|e| self.failed(name, &e))?;
+        }
+        // a folder in the way would stop the renames half-way, so it is looked for first
+        for name in &self.names {
+            if self.target.join(name).is_dir() {
+                return Err(self
+                    .failed(name, &std::io::Error::other("a folder of that name is in the way"))
+                    .into());
+            }
         }
         let mut open = OPEN.lock().unwrap_or_else(std::sync::PoisonError::into_inner);
         let mut placed = Vec::new();
@@ -110,16 +124,17 @@ impl Staging {
 
 /// An output that could not be written.
 pub(super) fn failed(path: &Path, why: &str) -> Diagnostic {
-    Diagnostic::output("cannot_write", path.display().to_string(), format!("cannot be written: {why}"))
+    // people know the place where the file was to appear, not the hidden one on the way
+    let shown: PathBuf =
+        path.components().filter(|c| !c.as_os_str().to_string_lossy().starts_with(PREFIX)).collect();
+    Diagnostic::output("cannot_write", shown.display().to_string(), format!("cannot be written: {why}"))
         .cure("free some space, or give another folder with `-o`; earlier outputs are as they were")
 }
 
 impl Drop for Staging {
     fn drop(&mut self) {
-        drop(fs::remove_dir_all(&self.hidden));
+        clear(&self.hidden, &self.made);
         OPEN.lock().unwrap_or_else(std::sync::PoisonError::into_inner).remove(&self.hidden);
-        // folders made for this run alone go with it; those that hold anything stay
-        self.made.iter().for_each(|folder| drop(fs::remove_dir(folder)));
     }
 }
 

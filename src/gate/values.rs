@@ -186,37 +186,45 @@ impl Sharing {
     }
 }
 
-/// Steps of the target that a source step covers, each with its share of the source step.
-fn shares(a: f64, b: f64, origin: f64, step: f64, count: usize, wrap: Option<f64>) -> Vec<(usize, f64)> {
-    let (lo, hi) = {
-        let (p, q) = ((a - origin) / step, (b - origin) / step);
-        (p.min(q), p.max(q))
-    };
-    // rounding of edges meant to agree must not spill a sliver into the neighbour
-    let snap = |v: f64| if (v - v.round()).abs() < 1e-7 { v.round() } else { v };
-    let (lo, hi) = (snap(lo), snap(hi));
-    let mut out = Vec::new();
-    let mut step_at = lo.floor();
-    while step_at < hi {
-        let share = (hi.min(step_at + 1.0) - lo.max(step_at)) / (hi - lo);
-        let at = wrap.map_or(step_at, |turn| step_at.rem_euclid(turn));
-        if at >= 0.0 && at < count as f64 && share > 0.0 {
-            out.push((at as usize, share));
+/// One axis of the target grid.
+struct AxisSteps {
+    origin: f64,
+    step: f64,
+    count: usize,
+    /// Steps round the globe, for longitudes.
+    turn: Option<f64>,
+}
+
+impl AxisSteps {
+    /// Steps of the target that a source step from `a` to `b` covers, each with its share of it.
+    fn shares(&self, a: f64, b: f64) -> Vec<(usize, f64)> {
+        let (p, q) = ((a - self.origin) / self.step, (b - self.origin) / self.step);
+        // rounding of edges meant to agree must not spill a sliver into the neighbour
+        let snap = |v: f64| if (v - v.round()).abs() < 1e-7 { v.round() } else { v };
+        let (low, high) = (snap(p.min(q)), snap(p.max(q)));
+        let mut out = Vec::new();
+        let mut from = low.floor();
+        while from < high {
+            let share = (high.min(from + 1.0) - low.max(from)) / (high - low);
+            let at = self.turn.map_or(from, |turn| from.rem_euclid(turn));
+            if at >= 0.0 && at < self.count as f64 && share > 0.0 {
+                out.push((at as usize, share));
+            }
+            from += 1.0;
         }
-        step_at += 1.0;
+        out
     }
-    out
 }
 
 fn overlap(source: &Grid, row: usize, line: &[(usize, f64)], sums: &mut Sums) {
     let grid = sums.grid;
     let t = &grid.transform;
-    let wrap = (grid.crs.kind == crate::grid::CrsKind::Geographic).then(|| 360.0 / t[1]);
-    let edge = |r: usize| source.y_at(r as f64);
-    let down = shares(edge(row), edge(row + 1), t[3], t[5], grid.rows, None);
+    let turn = (grid.crs.kind == crate::grid::CrsKind::Geographic).then(|| 360.0 / t[1]);
+    let columns = AxisSteps { origin: t[0], step: t[1], count: grid.columns, turn };
+    let rows = AxisSteps { origin: t[3], step: t[5], count: grid.rows, turn: None };
+    let down = rows.shares(source.y_at(row as f64), source.y_at(row as f64 + 1.0));
     for &(column, value) in line {
-        let (a, b) = (source.x_at(column as f64), source.x_at(column as f64 + 1.0));
-        for (c, across) in shares(a, b, t[0], t[1], grid.columns, wrap) {
+        for (c, across) in columns.shares(source.x_at(column as f64), source.x_at(column as f64 + 1.0)) {
             for (r, share) in &down {
                 sums.add(r * grid.columns + c, value * across * share);
             }

@@ -9,3 +9,6 @@ mod region;
 pub use ellipsoid::{MEAN_RADIUS, arc_of_chord, geocentric, geodesic, zone_area};
 pub use lattice::{Crs, CrsKind, Grid, Metric};
 pub use region::{Field, Region};
+
+#[cfg(test)]
+pub(crate) use lattice::tests as grids;

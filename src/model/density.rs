@@ -171,3 +171,55 @@ fn criterion(groups: &Groups, bandwidth: f64, floor: f64) -> f64 {
     });
     sum(terms) / total
 }
+
+#[cfg(test)]
+mod tests {
+    use std::sync::Arc;
+
+    use super::*;
+    use crate::grid::{Region, grids};
+    use crate::maths::random::Stream;
+    use crate::units::Seed;
+
+    fn clustered(doubled: bool) -> Training {
+        let mut stream = Stream::new(Seed(9), "cells", 0);
+        let inside: Vec<bool> = (0..3600).map(|i| i % 60 < 45 || i / 60 > 20).collect();
+        let region = Arc::new(Region::new(grids::planar(60, 60, 100.0), &inside));
+        let mut cells: Vec<u32> = (0..150)
+            .map(|i| {
+                let (column, row) = (5 + 12 * (i % 4) + stream.below(6), 25 + stream.below(8));
+                region.compact(row * 60 + column).unwrap() as u32
+            })
+            .collect();
+        if doubled {
+            cells.extend(cells.clone());
+        }
+        let training = Training::of_cells(region, &cells);
+        if doubled { training.with_outings(|i| (i % 150) as u32) } else { training }
+    }
+
+    /// Each unit keeps its whole weight inside the region, whatever its shape.
+    #[test]
+    fn mass_is_kept() {
+        let training = clustered(false);
+        let lattice = Lattice::new(&training, 1);
+        let places = training.places();
+        let spots: Vec<Spot> = places.iter().map(|(c, _)| lattice.spot(&training, *c)).collect();
+        for bandwidth in [60.0, 180.0, 900.0, 3000.0] {
+            let edges = lattice.edges(bandwidth, &spots);
+            let weights: Vec<f64> = places.iter().zip(&edges).map(|((_, w), e)| w / e).collect();
+            let field = lattice.spread(bandwidth, &spots, &weights, Power::One);
+            let region = training.region();
+            let mass = sum((0..region.len()).map(|c| field[lattice.spot(&training, c)] * region.areas()[c]));
+            assert!((mass - 150.0).abs() < 150.0 * 1e-9, "{bandwidth}: {mass}");
+        }
+    }
+
+    /// Every record twice in its outing says nothing new about how wide the kernel should be.
+    #[test]
+    fn doubling_every_record_leaves_the_bandwidth() {
+        let once = search("test", &clustered(false), 0.01).unwrap().best;
+        let twice = search("test", &clustered(true), 0.01).unwrap().best;
+        assert!((once - twice).abs() < 1e-9, "{once} {twice}");
+    }
+}

@@ -236,3 +236,66 @@ fn on_globe(a: f64, b: f64, apart: f64, sigma: f64) -> f64 {
     }
     float::exp(-0.5 * float::square(distance / sigma)) / (2.0 * std::f64::consts::PI * sigma * sigma)
 }
+
+#[cfg(test)]
+mod tests {
+    use std::sync::Arc;
+
+    use super::*;
+    use crate::grid::{Region, geodesic, grids};
+    use crate::maths::random::Stream;
+    use crate::units::Seed;
+
+    /// Σ K(d)/e by the double sum as written, d the great circle on a sphere of mean radius.
+    fn brute(region: &Region, cells: &[u32], sigma: f64) -> Vec<f64> {
+        let kernel = |a: usize, b: usize| {
+            let (p, q) = (region.centre(a), region.centre(b));
+            on_globe(p.1, q.1, q.0 - p.0, sigma)
+        };
+        let edge = |c: usize| (0..region.len()).map(|u| kernel(u, c) * region.areas()[u]).sum::<f64>();
+        let places: Vec<(usize, f64)> = cells.iter().map(|c| (*c as usize, edge(*c as usize))).collect();
+        (0..region.len()).map(|u| places.iter().map(|(c, e)| kernel(u, *c) / e).sum()).collect()
+    }
+
+    fn check(columns: usize, rows: usize, (west, north, step): (f64, f64, f64), sigma: f64) {
+        let grid = grids::globe(columns, rows, west, north, step);
+        let mut stream = Stream::new(Seed(11), "test", columns as u64);
+        let inside: Vec<bool> = (0..grid.len()).map(|_| stream.unit() < 0.8).collect();
+        let region = Arc::new(Region::new(grid, &inside));
+        let cells: Vec<u32> = (0..40).map(|_| stream.below(region.len()) as u32).collect();
+        let training = Training::of_cells(region.clone(), &cells);
+        let lattice = Lattice::new(&training, 1);
+        let spots: Vec<Spot> = cells.iter().map(|c| lattice.spot(&training, *c as usize)).collect();
+        let weights: Vec<f64> = lattice.edges(sigma, &spots).iter().map(|e| 1.0 / e).collect();
+        let fast = lattice.spread(sigma, &spots, &weights, Power::One);
+        let slow = brute(&region, &cells, sigma);
+        let peak = slow.iter().copied().fold(0.0, f64::max);
+        let mut total = 0.0;
+        for (cell, slow) in slow.iter().enumerate() {
+            let fast = fast[lattice.spot(&training, cell)];
+            assert!((fast - slow).abs() < 1e-9 * peak, "{west} {north}: {fast} {slow}");
+            total += fast * region.areas()[cell];
+        }
+        assert!((total - 40.0).abs() < 40.0 * 1e-9, "mass {total}");
+    }
+
+    #[test]
+    fn on_the_globe_rows_equal_the_double_sum() {
+        check(40, 30, (0.0, 7.5, 0.5), 150_000.0);
+        check(40, 30, (10.0, 60.0, 0.5), 80_000.0);
+        check(60, 20, (20.0, 90.0, 0.5), 120_000.0);
+        check(40, 20, (170.0, 5.0, 0.5), 200_000.0);
+        check(90, 40, (-180.0, 80.0, 4.0), 500_000.0);
+    }
+
+    /// The sphere's distance is within 0.6 % of the geodesic on the ellipsoid.
+    #[test]
+    fn the_sphere_is_close_to_the_ellipsoid() {
+        for (a, b) in [((0.0, 0.0), (0.0, 5.0)), ((0.0, 50.0), (6.0, 50.0)), ((10.0, 79.0), (30.0, 82.0))] {
+            let true_length = geodesic(a, b);
+            let k = on_globe(a.1, b.1, b.0 - a.0, 1e6) * (2.0 * std::f64::consts::PI * 1e12);
+            let length = 1e6 * (-2.0 * float::ln(k)).sqrt();
+            assert!((length / true_length - 1.0).abs() < 0.006, "{length} {true_length}");
+        }
+    }
+}

@@ -13,7 +13,8 @@ pub use finding::{CandidateFinding, Finding, Tool};
 pub use report::{Page, comparison, report};
 pub use settings::{Choice, Compress, OutputPlan, Per, Scale, SurfacePlan};
 pub use summary::{
-    Checked, FileDigest, Manifest, Stage, check_json, comparison_json, effort_json, manifest_json,
+    Checked, CheckedInput, FileDigest, Manifest, Stage, check_json, comparison_json, effort_json,
+    manifest_json,
 };
 pub use surface::{Finished, finish};
 pub use tables::{comparison_csv, held_out_csv, held_out_units_csv, kept_csv};

@@ -190,12 +190,28 @@ pub fn manifest_json(m: &Manifest) -> Value {
     })
 }
 
+/// An input as `check` shows it.
+#[derive(Debug, Clone, PartialEq)]
+pub struct CheckedInput {
+    /// Its name in the plan.
+    pub file: String,
+    /// `raster`, `vector` or `text`.
+    pub kind: &'static str,
+    /// Its CRS; empty where it states none.
+    pub crs: String,
+    /// West, south, east, north in its own CRS.
+    pub extent: Option<[f64; 4]>,
+    /// Cells or features.
+    pub count: Option<u64>,
+}
+
 /// What `check` found.
+#[derive(Default)]
 pub struct Checked {
     /// The grid, where it could be read, with its cells inside.
     pub grid: Option<(Grid, Option<usize>)>,
-    /// File, kind, CRS, extent, count.
-    pub inputs: Vec<(String, &'static str, String, Option<[f64; 4]>, Option<u64>)>,
+    /// The inputs.
+    pub inputs: Vec<CheckedInput>,
     /// Memory a build would need.
     pub memory_bytes: Option<u64>,
     /// Seconds a build would take, roughly.
@@ -211,7 +227,7 @@ pub fn check_json(c: &Checked) -> Value {
     let inputs: Value = c
         .inputs
         .iter()
-        .map(|(file, kind, crs, extent, count)| json!({"file": file, "kind": kind, "crs": crs, "extent": extent, "count": count}))
+        .map(|i| json!({"file": i.file, "kind": i.kind, "crs": i.crs, "extent": i.extent, "count": i.count}))
         .collect();
     let said = |list: &[Diagnostic]| -> Value { list.iter().map(warning).collect() };
     json!({

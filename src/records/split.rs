@@ -125,6 +125,9 @@ impl Folds {
     /// When there are fewer outings, places or blocks with records than folds.
     pub fn deal(records: &Records, blocks: &Blocks, split: Split, count: usize, seed: Seed) -> Outcome<Self> {
         let split = if split == Split::Outings && !records.outings { Split::Random } else { split };
+        if records.places < count {
+            return Err(too_few(Split::Random, records.places, count).into());
+        }
         let mut stream = Stream::new(seed, split.word(), 0);
         let group = |u: &Unit| match split {
             Split::Outings => u.outing,
@@ -199,13 +202,42 @@ fn balance(weights: &[f64], folds: usize, stream: &mut Stream) -> Vec<u16> {
 }
 
 fn too_few(split: Split, found: usize, folds: usize) -> Diagnostic {
-    let (what, cure) = match split {
-        Split::Outings => ("outings (observer and date)", "or choose another `split`"),
-        Split::Random => ("places (cells with a record)", "or use a finer grid"),
-        Split::Blocks => ("blocks with records", "or make `block` smaller"),
+    let (what, other) = match split {
+        Split::Outings => ("outings (observer and date)", "choose another `split`"),
+        Split::Random => ("places (cells with a record)", "use a finer grid"),
+        Split::Blocks => ("blocks with records", "make `block` smaller"),
     };
-    Diagnostic::input("too_few_to_hold_out", "", format!("{found} {what} cannot fill {folds} folds"))
-        .cure(format!("lower `folds` in [holdout] to {} or fewer, {cure}", found.max(2)))
+    let text = match found {
+        1 => format!(
+            "the records make a single one of the {what}, so nothing can be held out ({folds} folds asked for)"
+        ),
+        _ => format!("{found} {what} cannot fill {folds} folds"),
+    };
+    let cure = match found {
+        1 => format!("give more records, or {other}"),
+        _ => format!("lower `folds` to {found} or fewer, or {other}"),
+    };
+    Diagnostic::input("too_few_to_hold_out", "[holdout] folds", text).cure(cure)
+}
+
+#[cfg(test)]
+impl Training {
+    /// A training part of units of weight 1 in these cells, each an outing of its own.
+    pub(crate) fn of_cells(region: Arc<Region>, cells: &[u32]) -> Self {
+        let unit = |(i, cell): (usize, &u32)| Unit {
+            cell: *cell,
+            weight: 1.0,
+            outing: i as u32,
+            uncertainty: f32::NAN,
+        };
+        Self { region, units: cells.iter().enumerate().map(unit).collect(), available: None, outings: true }
+    }
+
+    /// The same units in other outings.
+    pub(crate) fn with_outings(mut self, outing: impl Fn(usize) -> u32) -> Self {
+        self.units.iter_mut().enumerate().for_each(|(i, u)| u.outing = outing(i));
+        self
+    }
 }
 
 #[cfg(test)]

@@ -46,37 +46,11 @@ pub fn run(
     let blocks = lay_blocks(plan, &region)?;
     let folds = Folds::deal(&records, &blocks, plan.holdout.split, plan.holdout.folds, plan.seed)?;
     let floor = plan.surface.floor.get();
-    let mut candidates = Vec::new();
-    for candidate in &plan.candidates {
-        let steps = folds.count as u64 + 1;
-        needs.observer.begin(&format!("fit and check {}", candidate.name), Some(steps));
-        let all = Training::all(&records, region.clone());
-        let whole = Context { floor, blocks: Some(&blocks), candidates: &plan.candidates, seed: plan.seed };
-        let fitted =
-            notes.stage(format!("fit {}", candidate.name), |_| fit(candidate, &all, &layers, whole))?;
-        needs.observer.advance(1);
-        let work = Work {
-            records: &records,
-            region: &region,
-            layers: &layers,
-            blocks: &blocks,
-            folds: &folds,
-            context: Context { blocks: None, ..whole },
-        };
-        let scores = notes.stage(format!("check {}", candidate.name), |_| {
-            work.check(candidate, &mut || needs.observer.advance(1))
-        })?;
-        notes.warnings.0.extend(fitted.warnings.iter().cloned());
-        let odds = odds(candidate, &layers, &all);
-        candidates.push(CandidateFinding {
-            name: candidate.name.clone(),
-            kind: candidate.kind.clone(),
-            fitted,
-            scores,
-            odds,
-        });
-        needs.observer.end();
-    }
+    let context = Context { floor, blocks: Some(&blocks), candidates: &plan.candidates, seed: plan.seed };
+    let work =
+        Work { records: &records, region: &region, layers: &layers, blocks: &blocks, folds: &folds, context };
+    let candidates: Vec<CandidateFinding> =
+        plan.candidates.iter().map(|c| work.candidate(c, needs, notes)).collect::<Outcome<_>>()?;
     let verdict = notes.stage("compare", |_| {
         let complexity: Vec<usize> = candidates.iter().map(|c| c.fitted.complexity).collect();
         let scores: Vec<&CandidateScores> = candidates.iter().map(|c| &c.scores).collect();
@@ -153,13 +127,29 @@ struct Work<'a> {
 }
 
 impl Work<'_> {
+    /// Fits a candidate to all records and checks it on held-out ones.
+    fn candidate(&self, plan: &CandidatePlan, needs: &Needs, notes: &mut Notes) -> Outcome<CandidateFinding> {
+        needs.observer.begin(&format!("fit and check {}", plan.name), Some(self.folds.count as u64 + 1));
+        let all = Training::all(self.records, self.region.clone());
+        let fitted =
+            notes.stage(format!("fit {}", plan.name), |_| fit(plan, &all, self.layers, self.context))?;
+        needs.observer.advance(1);
+        let scores = notes
+            .stage(format!("check {}", plan.name), |_| self.check(plan, &mut || needs.observer.advance(1)))?;
+        needs.observer.end();
+        notes.warnings.0.extend(fitted.warnings.iter().cloned());
+        let odds = odds(plan, self.layers, &all);
+        Ok(CandidateFinding { name: plan.name.clone(), kind: plan.kind.clone(), fitted, scores, odds })
+    }
+
     /// Fits a candidate to each training part and scores it on the held-out one.
     fn check(&self, candidate: &CandidatePlan, done: &mut dyn FnMut()) -> Outcome<CandidateScores> {
+        let context = Context { blocks: None, ..self.context };
         let mut surfaces = Vec::new();
         let mut parts: Vec<HeldOut> = Vec::new();
         for fold in 0..self.folds.count {
             let (training, held) = self.folds.part(fold, self.records, self.region);
-            let fitted: Fitted = fit(candidate, &training, self.layers, self.context)?;
+            let fitted: Fitted = fit(candidate, &training, self.layers, context)?;
             surfaces.push(with_floor(&fitted.density, self.context.floor));
             parts.push(held);
             done();
