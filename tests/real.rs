@@ -194,10 +194,11 @@ fn records_and_visits_tell_different_stories() {
     let moved = a.iter().zip(&b).map(|(a, b)| (a - b).abs()).sum::<f64>() / 2.0;
     println!("{:.0} % of the weight moves when visits are counted instead of records", 100.0 * moved);
     assert!(moved > 0.15, "only {moved} of the weight moves");
-    // the largest cell by a direct sum over records at cell centres, renormalised over land, floor 1 %
+    // the largest cell by a direct sum over records where they lie (visits: the mean place of their
+    // records), each renormalised over land, floor 1 %; computed apart with numpy and pyproj
     let largest = |values: &[f64]| values.iter().copied().fold(0.0, f64::max);
-    close(largest(&a), 6.395_4e-4, 6e-6);
-    close(largest(&b), 4.142_8e-4, 8e-6);
+    close(largest(&a), 6.444_9e-4, 3e-6);
+    close(largest(&b), 4.191_1e-4, 8e-6);
 }
 
 #[test]

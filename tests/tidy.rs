@@ -131,6 +131,7 @@ fn methods_name_their_formula_and_source() {
         "model/access.rs",
         "model/blend.rs",
         "model/density.rs",
+        "model/precision.rs",
         "model/remainder.rs",
         "model/terms.rs",
         "proxies/distance.rs",

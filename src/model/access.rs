@@ -15,10 +15,10 @@
 use rayon::prelude::*;
 
 use crate::diag::{Diagnostic, Outcome};
-use crate::maths::sum::{par_totals, sum};
+use crate::maths::sum::par_totals;
 use crate::maths::{float, linear};
 use crate::proxies::ProxyStack;
-use crate::records::{Blocks, Training};
+use crate::records::Training;
 use crate::units::Share;
 
 use super::fitted::{Context, Fitted, Parameter, normalise};
@@ -26,7 +26,7 @@ use super::settings::{CurveForm, Fit, TermPlan};
 use super::terms::{Free, Term};
 
 /// Most parameters a candidate may have (two per layer and the base).
-const MOST: usize = 33;
+pub(super) const MOST: usize = 33;
 /// Cells of the sample on which the search begins.
 const SAMPLE: usize = 20_000;
 /// Starts of the search: how far the first scales are stretched.
@@ -79,7 +79,7 @@ pub(super) fn examine(name: &str, terms: &[TermPlan], layers: &ProxyStack) -> Ou
 }
 
 /// The cells a pass runs over.
-enum Cells<'a> {
+pub(super) enum Cells<'a> {
     All(usize),
     Some(&'a [u32]),
 }
@@ -109,14 +109,14 @@ struct Found {
 
 /// Mean of G over an area, and of its derivatives over the mean.
 #[derive(Clone)]
-struct Mean {
+pub(super) struct Mean {
     value: f64,
     slopes: Vec<f64>,
 }
 
 /// Means over the region, which the base share is measured against, and over its observed part, in
 /// which units could be.
-struct Moments {
+pub(super) struct Moments {
     region: Mean,
     observed: Mean,
 }
@@ -136,14 +136,14 @@ impl Moments {
     }
 }
 
-struct Model<'a> {
+pub(super) struct Model<'a> {
     place: String,
     terms: Vec<Term>,
     base: Option<f64>,
     training: &'a Training,
-    exposure: Vec<f64>,
-    places: Vec<(usize, f64)>,
-    total: f64,
+    pub(super) exposure: Vec<f64>,
+    pub(super) places: Vec<(usize, f64)>,
+    pub(super) total: f64,
 }
 
 impl<'a> Model<'a> {
@@ -174,12 +174,12 @@ impl<'a> Model<'a> {
     }
 
     /// Number of parameters, given ones included; the base is the last.
-    fn width(&self) -> usize {
+    pub(super) fn width(&self) -> usize {
         self.terms.iter().map(Term::width).sum::<usize>() + 1
     }
 
     /// The free ranges of all parameters; `None` where given.
-    fn ranges(&self, spread: f64) -> Vec<Option<Free>> {
+    pub(super) fn ranges(&self, spread: f64) -> Vec<Option<Free>> {
         let of_terms = self.terms.iter().flat_map(|t| {
             (0..t.width()).map(move |k| if t.given(k).is_some() { None } else { Some(t.free(k, spread)) })
         });
@@ -199,7 +199,7 @@ impl<'a> Model<'a> {
             .collect()
     }
 
-    fn ready(&self, at: &[f64]) -> Vec<[f64; 4]> {
+    pub(super) fn ready(&self, at: &[f64]) -> Vec<[f64; 4]> {
         let mut from = 0;
         self.terms
             .iter()
@@ -222,7 +222,7 @@ impl<'a> Model<'a> {
         float::exp(log)
     }
 
-    fn moments(&self, ready: &[[f64; 4]], cells: &Cells) -> Moments {
+    pub(super) fn moments(&self, ready: &[[f64; 4]], cells: &Cells) -> Moments {
         let areas = self.training.region().areas();
         let region = self.mean(ready, cells, areas);
         let observed =
@@ -249,7 +249,13 @@ impl<'a> Model<'a> {
 
     /// f in a cell over its mean in the observed part, and derivatives of its logarithm by all
     /// parameters into `scores`.
-    fn score(&self, cell: usize, base: f64, state: (&[[f64; 4]], &Moments), scores: &mut [f64; MOST]) -> f64 {
+    pub(super) fn score(
+        &self,
+        cell: usize,
+        base: f64,
+        state: (&[[f64; 4]], &Moments),
+        scores: &mut [f64; MOST],
+    ) -> f64 {
         let (ready, moments) = state;
         let mut slopes = [0.0; MOST];
         let relative = self.product(cell, ready, &mut slopes) / moments.region.value;
@@ -421,69 +427,6 @@ impl<'a> Model<'a> {
                 .cure("give the parameter, or choose a curve of another form"),
         )
     }
-
-    /// Standard errors of the parameters from sums of scores by block; `None` where a parameter is
-    /// given or lies at a bound.
-    fn standard_errors(&self, at: &[f64], blocks: &Blocks) -> Vec<Option<f64>> {
-        let n = self.width();
-        let ranges = self.ranges(1.0);
-        let inner: Vec<usize> =
-            (0..n).filter(|&k| ranges[k].is_some_and(|r| at[k] > r.low && at[k] < r.high)).collect();
-        let (information, sums) = self.block_scores(at, blocks, &inner);
-        let m = inner.len();
-        let mut meat = vec![0.0; m * m];
-        for block in sums.chunks_exact(m.max(1)) {
-            for a in 0..m {
-                for b in 0..m {
-                    meat[a * m + b] += block[a] * block[b];
-                }
-            }
-        }
-        let mut errors = vec![None; n];
-        if blocks.count < 2 {
-            return errors;
-        }
-        let correction = blocks.count as f64 / (blocks.count - 1) as f64;
-        if let Some(bread) = linear::inverse(&information, m) {
-            for (a, &k) in inner.iter().enumerate() {
-                let row = &bread[a * m..(a + 1) * m];
-                let variance: f64 = (0..m)
-                    .flat_map(|i| (0..m).map(move |j| (i, j)))
-                    .map(|(i, j)| row[i] * meat[i * m + j] * row[j])
-                    .sum();
-                errors[k] = Some((variance * correction).sqrt());
-            }
-        }
-        errors
-    }
-
-    /// Fisher information, and by block the sum of scores of its units less what was expected.
-    fn block_scores(&self, at: &[f64], blocks: &Blocks, inner: &[usize]) -> (Vec<f64>, Vec<f64>) {
-        let ready = self.ready(at);
-        let moments = self.moments(&ready, &Cells::All(self.exposure.len()));
-        let (m, base) = (inner.len(), at[self.width() - 1]);
-        let area = sum(self.exposure.iter().copied());
-        let mut information = vec![0.0; m * m];
-        let mut sums = vec![0.0; m * blocks.count];
-        let mut scores = [0.0; MOST];
-        for cell in 0..self.exposure.len() {
-            let f = self.score(cell, base, (&ready, &moments), &mut scores);
-            let expected = self.total * self.exposure[cell] * f / area;
-            let block = blocks.of_cell[cell] as usize * m;
-            for (a, &k) in inner.iter().enumerate() {
-                sums[block + a] -= expected * scores[k];
-                for (b, &l) in inner.iter().enumerate() {
-                    information[a * m + b] += expected * scores[k] * scores[l];
-                }
-            }
-        }
-        for &(cell, weight) in &self.places {
-            self.score(cell, base, (&ready, &moments), &mut scores);
-            let block = blocks.of_cell[cell] as usize * m;
-            inner.iter().enumerate().for_each(|(a, &k)| sums[block + a] += weight * scores[k]);
-        }
-        (information, sums)
-    }
 }
 
 /// Free parameters that are not held at a bound by their gradient.
@@ -524,6 +467,7 @@ mod tests {
     use crate::grid::{Field, Region, grids};
     use crate::maths::random::Stream;
     use crate::proxies::{Layer, Measure};
+    use crate::records::Blocks;
     use crate::units::Seed;
 
     fn layer(region: &Arc<Region>, name: &str, value: impl Fn(f64, f64) -> f64) -> Layer {

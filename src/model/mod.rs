@@ -8,6 +8,7 @@ mod density;
 mod fitted;
 mod groups;
 mod lattice;
+mod precision;
 mod remainder;
 mod settings;
 mod terms;
