@@ -128,9 +128,8 @@ impl Moments {
         let level = (1.0 - base) * ratio + base;
         let part = (1.0 - base) * ratio / level;
         let width = self.region.slopes.len();
-        for k in 0..width {
-            slopes[k] = part * (self.observed.slopes[k] - self.region.slopes[k]);
-        }
+        let both = self.observed.slopes.iter().zip(&self.region.slopes);
+        slopes.iter_mut().zip(both).for_each(|(s, (seen, all))| *s = part * (seen - all));
         slopes[width] = (1.0 - ratio) / level;
         level
     }

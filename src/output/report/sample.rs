@@ -74,6 +74,7 @@ fn records(region: &Arc<Region>, layers: &ProxyStack, wanted: usize) -> Records 
                 weight: 1.0,
                 outing,
                 uncertainty: f32::NAN,
+                offset: [0.0; 2],
             }));
         }
     }
