@@ -6,13 +6,15 @@ use std::sync::Arc;
 use crate::diag::{Diagnostic, Outcome};
 use crate::grid::{CrsKind, Region};
 
-use super::dates::DateRange;
 use super::ledger::{Ledger, Rule};
 use super::row::{Content, Fields, Row};
 use super::screen::{Passed, date_of, precision, screen};
 use super::settings::{Count, RecordsPlan};
 use super::snap::Snapper;
-use super::units::{Records, Unit, VisitFacts};
+use super::units::{Records, Unit};
+use super::visits::{
+    Names, Visit, Visits, day_numbers, effective, facts, observer_set, shares, top, top_cell,
+};
 
 /// Turns coordinates of a reference system (by name, or a record's own datum) into the grid's, in
 /// place; a place that cannot be turned becomes not-a-number.
@@ -49,9 +51,6 @@ struct Waiting {
     dataset: u32,
 }
 
-/// What distinguishes a visit: cell, observer, first and last day.
-type VisitKey = (u32, u32, Option<(i32, i32)>);
-
 /// Gathers rows.
 pub struct Collector<'a> {
     plan: &'a RecordsPlan,
@@ -77,73 +76,6 @@ struct Hints {
     swapped: u64,
     commas: u64,
     extent: Option<[f64; 4]>,
-}
-
-/// Text interned as numbers; 0 is the unknown.
-#[derive(Default)]
-#[allow(clippy::disallowed_types, reason = "looked up only, never iterated")]
-struct Names {
-    numbers: std::collections::HashMap<String, u32>,
-    names: Vec<String>,
-}
-
-impl Names {
-    fn number(&mut self, name: &str) -> u32 {
-        if name.is_empty() {
-            return 0;
-        }
-        if let Some(&n) = self.numbers.get(name) {
-            return n;
-        }
-        self.names.push(name.to_owned());
-        let n = self.names.len() as u32;
-        self.numbers.insert(name.to_owned(), n);
-        n
-    }
-
-    /// Rank of each number in the order of the names, so that results do not depend on row order.
-    fn order(&self) -> Vec<u32> {
-        let mut by_name: Vec<u32> = (1..=self.names.len() as u32).collect();
-        by_name.sort_unstable_by_key(|&n| &self.names[n as usize - 1]);
-        let mut order = vec![0; self.names.len() + 1];
-        by_name.iter().enumerate().for_each(|(rank, &n)| order[n as usize] = rank as u32 + 1);
-        order
-    }
-}
-
-/// The distinct visits and how many records each has.
-#[derive(Default)]
-#[allow(clippy::disallowed_types, reason = "looked up only, never iterated")]
-struct Visits {
-    numbers: std::collections::HashMap<VisitKey, u32>,
-    found: Vec<Visit>,
-}
-
-#[derive(Clone, Copy)]
-struct Visit {
-    key: VisitKey,
-    records: u32,
-    dataset: u32,
-    uncertainty: f32,
-    /// Sum of the records' offsets, in whole parts so that no order of adding changes it.
-    offset: [i64; 2],
-}
-
-impl Visits {
-    fn add(&mut self, key: VisitKey, (dataset, uncertainty, offset): (u32, f32, [i64; 2])) -> u32 {
-        let next = self.found.len() as u32;
-        let n = *self.numbers.entry(key).or_insert(next);
-        if n == next {
-            self.found.push(Visit { key, records: 0, dataset, uncertainty, offset: [0; 2] });
-        }
-        let visit = &mut self.found[n as usize];
-        visit.records += 1;
-        visit.offset[0] += offset[0];
-        visit.offset[1] += offset[1];
-        visit.dataset = visit.dataset.min(dataset);
-        visit.uncertainty = visit.uncertainty.min(uncertainty); // a number beats not-a-number
-        n
-    }
 }
 
 /// Parts into which a cell's side is divided when positions in it are added up.
@@ -460,59 +392,5 @@ impl Hints {
         } else {
             None
         }
-    }
-}
-
-/// An observer list as a set: its names, trimmed, sorted, each once.
-fn observer_set(text: &str) -> String {
-    if !text.contains('|') {
-        return text.trim().to_owned();
-    }
-    let names: std::collections::BTreeSet<&str> =
-        text.split('|').map(str::trim).filter(|n| !n.is_empty()).collect();
-    names.into_iter().collect::<Vec<_>>().join(" | ")
-}
-
-/// First and last day as numbers.
-fn day_numbers(range: DateRange) -> (i32, i32) {
-    let number = |d: jiff::civil::Date| i32::from(d.year()) * 512 + i32::from(d.day_of_year());
-    (number(range.first), number(range.last))
-}
-
-/// Share of the units by observer or data set.
-fn shares(visits: &[Visit], pick: fn(&Visit) -> u32, count: Count) -> Vec<f64> {
-    let mut by: BTreeMap<u32, f64> = BTreeMap::new();
-    for v in visits {
-        *by.entry(pick(v)).or_insert(0.0) += if count == Count::Records { f64::from(v.records) } else { 1.0 };
-    }
-    let total: f64 = by.values().sum();
-    by.values().map(|v| v / total).collect()
-}
-
-/// Inverse Simpson number.
-fn effective(shares: &[f64]) -> f64 {
-    1.0 / shares.iter().map(|s| s * s).sum::<f64>()
-}
-
-fn top(shares: &[f64]) -> f64 {
-    shares.iter().copied().fold(0.0, f64::max)
-}
-
-/// Largest share of one cell; units are sorted by cell.
-fn top_cell(units: &[Unit]) -> f64 {
-    let weight = |c: &[Unit]| c.iter().map(|u| u.weight).sum::<f64>();
-    let total = weight(units);
-    units.chunk_by(|a, b| a.cell == b.cell).map(weight).fold(0.0, f64::max) / total
-}
-
-fn facts(visits: &[Visit]) -> VisitFacts {
-    let mut sizes: Vec<f64> = visits.iter().map(|v| f64::from(v.records)).collect();
-    sizes.sort_unstable_by(f64::total_cmp);
-    let n = sizes.len() as f64;
-    VisitFacts {
-        count: visits.len() as u64,
-        mean: sizes.iter().sum::<f64>() / n,
-        median: crate::maths::rank::quantile(&sizes, 0.5),
-        single_share: sizes.iter().take_while(|&&s| s == 1.0).count() as f64 / n,
     }
 }

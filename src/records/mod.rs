@@ -14,6 +14,7 @@ mod settings;
 mod snap;
 mod split;
 mod units;
+mod visits;
 
 pub use blocks::Blocks;
 pub use collect::{Collector, Kept, Project, Sink};
