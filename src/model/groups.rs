@@ -29,23 +29,28 @@ pub(super) struct Groups {
 impl Groups {
     pub(super) fn new(training: &Training, step: usize) -> Self {
         let lattice = Lattice::new(training, step);
-        let mut numbers: BTreeMap<Spot, usize> = BTreeMap::new();
-        let mut groups: BTreeMap<u32, BTreeMap<Spot, f64>> = BTreeMap::new();
         let key = |u: &Unit| if training.outings() { u.outing } else { u.cell };
-        for unit in training.units() {
-            let spot = lattice.spot(training, unit.cell as usize);
-            numbers.insert(spot, 0);
-            *groups.entry(key(unit)).or_default().entry(spot).or_insert(0.0) += unit.weight;
-        }
-        numbers.values_mut().enumerate().for_each(|(i, n)| *n = i);
-        let groups: Vec<Vec<(usize, f64)>> = groups
-            .into_values()
-            .map(|g| g.into_iter().map(|(spot, w)| (numbers[&spot], w)).collect())
+        let mut units: Vec<(u32, Spot, f64)> = training
+            .units()
+            .iter()
+            .map(|u| (key(u), lattice.spot(training, u.cell as usize), u.weight))
             .collect();
-        let mut weights = vec![0.0; numbers.len()];
-        groups.iter().flatten().for_each(|(i, w)| weights[*i] += w);
+        units.sort_by_key(|u| (u.0, u.1));
+        let mut spots: Vec<Spot> = units.iter().map(|u| u.1).collect();
+        spots.sort_unstable();
+        spots.dedup();
+        let number = |spot: &Spot| spots.binary_search(spot).expect("every spot is listed");
+        let mut weights = vec![0.0; spots.len()];
+        let groups: Vec<Vec<(usize, f64)>> = units
+            .chunk_by(|a, b| a.0 == b.0)
+            .map(|group| {
+                let by_spot = group.chunk_by(|a, b| a.1 == b.1);
+                by_spot.map(|same| (number(&same[0].1), same.iter().map(|u| u.2).sum())).collect()
+            })
+            .collect();
+        groups.iter().flatten().for_each(|(i, w): &(usize, f64)| weights[*i] += w);
         let area = sum((0..training.region().len()).map(|c| training.exposure(c)));
-        Self { lattice, spots: numbers.into_keys().collect(), weights, groups, area }
+        Self { lattice, spots, weights, groups, area }
     }
 
     /// What a group itself adds to the field at each of its spots, its weights over `divisors`.

@@ -12,6 +12,7 @@
 use rayon::prelude::*;
 use rstar::{AABB, PointDistance, RTree, RTreeObject};
 
+use crate::diag::Observer;
 use crate::grid::{Metric, Region, arc_of_chord, geocentric};
 
 use super::features::{Features, Shape};
@@ -54,17 +55,20 @@ fn to_segment<const D: usize>(p: &[f64; D], a: &[f64; D], b: &[f64; D]) -> f64 {
     (0..D).map(|i| p[i] - a[i] - t * (b[i] - a[i])).map(|d| d * d).sum()
 }
 
-/// Distance in metres of every inside cell; `None` when the layer holds no geometry.
-pub fn distance(features: &Features, region: &Region) -> Option<Vec<f64>> {
+/// Distance in metres of every inside cell, told to the observer cell by cell; `None` when the layer holds no geometry.
+pub fn distance(features: &Features, region: &Region, observer: &dyn Observer) -> Option<Vec<f64>> {
     let mut values = match region.grid().metric() {
         Metric::Planar => {
             let unit = region.grid().metres_per_unit();
             let segments = features.shapes.iter().flat_map(planar).collect();
-            nearest(segments, region, |x, y| [x, y])?.into_iter().map(|d| d * unit).collect::<Vec<f64>>()
+            nearest(segments, region, observer, |x, y| [x, y])?
+                .into_iter()
+                .map(|d| d * unit)
+                .collect::<Vec<f64>>()
         }
         Metric::Geodesic => {
             let segments = features.shapes.par_iter().flat_map_iter(spatial).collect();
-            nearest(segments, region, geocentric)?.into_iter().map(arc_of_chord).collect()
+            nearest(segments, region, observer, geocentric)?.into_iter().map(arc_of_chord).collect()
         }
     };
     if !features.covered.is_empty() {
@@ -77,6 +81,7 @@ pub fn distance(features: &Features, region: &Region) -> Option<Vec<f64>> {
 fn nearest<const D: usize>(
     segments: Vec<Segment<D>>,
     region: &Region,
+    observer: &dyn Observer,
     place: impl Fn(f64, f64) -> [f64; D] + Sync,
 ) -> Option<Vec<f64>>
 where
@@ -86,13 +91,38 @@ where
         return None;
     }
     let tree = RTree::bulk_load(segments);
-    let one = |cell: usize| {
-        let (x, y) = region.centre(cell);
-        let point = place(x, y);
-        let nearest = tree.nearest_neighbor(point).expect("the tree is not empty");
-        nearest.distance_2(&point).sqrt()
-    };
-    Some((0..region.len()).into_par_iter().with_min_len(1024).map(one).collect())
+    let mut values = vec![0.0; region.len()];
+    values.par_chunks_mut(RUN).enumerate().for_each(|(run, values)| {
+        let mut before: Option<([f64; D], f64)> = None;
+        for (i, value) in values.iter_mut().enumerate() {
+            let (x, y) = region.centre(run * RUN + i);
+            let point = place(x, y);
+            *value = match before {
+                // nothing nearer than the neighbour's distance and the way from it can be missed
+                Some((last, d)) => within(&tree, &point, d + to_segment(&point, &last, &last).sqrt()),
+                None => None,
+            }
+            .unwrap_or_else(|| {
+                tree.nearest_neighbor(point).expect("the tree is not empty").distance_2(&point).sqrt()
+            });
+            before = Some((point, *value));
+        }
+        observer.advance(values.len() as u64);
+    });
+    Some(values)
+}
+
+/// Cells that follow each other and help each other's search.
+const RUN: usize = 1024;
+
+/// Distance to the nearest segment, given that one lies within `bound`.
+fn within<const D: usize>(tree: &RTree<Segment<D>>, point: &[f64; D], bound: f64) -> Option<f64>
+where
+    [f64; D]: rstar::Point<Scalar = f64>,
+{
+    let bound = bound * (1.0 + 1e-9) + 1e-9; // rounding must not shut the nearest out
+    let near = tree.locate_within_distance(*point, bound * bound);
+    near.map(|s| s.distance_2(point)).min_by(f64::total_cmp).map(f64::sqrt)
 }
 
 /// The segments of a shape in the plane.
@@ -128,6 +158,7 @@ fn pieces(a: (f64, f64), b: (f64, f64)) -> Vec<((f64, f64), (f64, f64))> {
 #[cfg(test)]
 mod tests {
     use super::*;
+    use crate::diag::Silent;
     use crate::grid::{geodesic, grids};
     use crate::maths::random::Stream;
     use crate::units::Seed;
@@ -161,7 +192,7 @@ mod tests {
             let region = Region::new(grids::planar(17, 13, 250.0), &[true; 17 * 13]);
             let shapes = random_shapes(&mut stream, (-1000.0, -1000.0, 6000.0, 5000.0));
             let all: Vec<Segment<2>> = shapes.iter().flat_map(planar).collect();
-            let fast = distance(&Features { shapes, covered: Vec::new() }, &region).unwrap();
+            let fast = distance(&Features { shapes, covered: Vec::new() }, &region, &Silent).unwrap();
             for (cell, d) in fast.iter().enumerate() {
                 let (x, y) = region.centre(cell);
                 let slow =
@@ -187,7 +218,7 @@ mod tests {
                     dense.extend((0..=2000).map(|i| at(f64::from(i) / 2000.0)));
                 }
             }
-            let fast = distance(&Features { shapes, covered: Vec::new() }, &region).unwrap();
+            let fast = distance(&Features { shapes, covered: Vec::new() }, &region, &Silent).unwrap();
             for (cell, d) in fast.iter().enumerate().step_by(5) {
                 let slow = dense.iter().map(|p| geodesic(region.centre(cell), *p)).fold(f64::MAX, f64::min);
                 assert!((d - slow).abs() <= 0.001 * slow + 150.0, "{west} {north}: {d} {slow}");
@@ -200,7 +231,7 @@ mod tests {
     fn measures_to_the_line_not_to_its_vertices() {
         let region = Region::new(grids::planar(21, 3, 100.0), &[true; 63]);
         let line = Shape(vec![(0.0, 50.0), (2000.0, 50.0)]);
-        let d = distance(&Features { shapes: vec![line], covered: Vec::new() }, &region).unwrap();
+        let d = distance(&Features { shapes: vec![line], covered: Vec::new() }, &region, &Silent).unwrap();
         assert!((d[21 + 10] - 100.0).abs() < 1e-9, "{}", d[31]);
     }
 
@@ -208,7 +239,8 @@ mod tests {
     fn is_zero_inside_polygons() {
         let region = Region::new(grids::planar(4, 1, 10.0), &[true; 4]);
         let shapes = vec![Shape(vec![(0.0, 0.0), (20.0, 0.0), (20.0, 10.0), (0.0, 10.0), (0.0, 0.0)])];
-        let d = distance(&Features { shapes, covered: vec![true, true, false, false] }, &region).unwrap();
+        let d = distance(&Features { shapes, covered: vec![true, true, false, false] }, &region, &Silent)
+            .unwrap();
         assert_eq!(d, vec![0.0, 0.0, 5.0, 15.0]);
     }
 }

@@ -77,8 +77,9 @@ pub fn gather(plan: &StudyPlan, needs: &Needs, sink: &mut dyn Sink, notes: &mut 
     let mut layers = ProxyStack::default();
     for layer in &plan.layers {
         let name = format!("layer {}", layer.name);
-        needs.observer.begin(&name, None);
-        match notes.stage(&name, |notes| measure(layer, needs.sources, &region, notes)) {
+        let cells = (layer.measure == Measure::Distance).then_some(region.len() as u64);
+        needs.observer.begin(&name, cells);
+        match notes.stage(&name, |notes| measure(layer, needs, &region, notes)) {
             Ok(layer) => layers.0.push(layer),
             Err(p) => problems.extend(p.0),
         }
@@ -163,10 +164,10 @@ fn measure(
     region: &Arc<Region>,
     notes: &mut Notes,
 ) -> Outcome<Layer> {
-    let (values, unit) = match sources.layer(plan, region, &mut notes.warnings)? {
+    let (values, unit) = match needs.sources.layer(plan, region, &mut notes.warnings)? {
         LayerData::Values(values, unit) => (values, unit),
         LayerData::Features(features) => {
-            let values = distance(&features, region).ok_or_else(|| {
+            let values = distance(&features, region, needs.observer).ok_or_else(|| {
                 Diagnostic::input("empty_layer", plan.file.as_str(), "holds no geometry")
                     .cure("check the file")
             })?;
