@@ -158,12 +158,7 @@ fn scale(region: &Region, wander: &Wander, notes: &mut Notes) -> Outcome<()> {
 }
 
 /// Brings one layer to the grid.
-fn measure(
-    plan: &LayerPlan,
-    sources: &dyn Sources,
-    region: &Arc<Region>,
-    notes: &mut Notes,
-) -> Outcome<Layer> {
+fn measure(plan: &LayerPlan, needs: &Needs, region: &Arc<Region>, notes: &mut Notes) -> Outcome<Layer> {
     let (values, unit) = match needs.sources.layer(plan, region, &mut notes.warnings)? {
         LayerData::Values(values, unit) => (values, unit),
         LayerData::Features(features) => {
