@@ -52,7 +52,9 @@ pub fn judge(candidates: &[&CandidateScores], complexity: &[usize], resamples: u
         .enumerate()
         .map(|(i, c)| {
             let versus_best = difference(c, candidates[best], &draws);
-            let apart = versus_best.interval.is_some_and(|(low, high)| high < 0.0 || low > 0.0);
+            // a surface that gave a held-out unit no weight at all is infinitely worse
+            let apart = versus_best.value == Some(f64::NEG_INFINITY)
+                || versus_best.interval.is_some_and(|(low, high)| high < 0.0 || low > 0.0);
             Standing {
                 candidate: i,
                 rank: order.iter().position(|o| *o == i).map_or(0, |r| r + 1),

@@ -5,15 +5,15 @@ use std::path::{Path, PathBuf};
 use serde_json::Value;
 
 use trodden::diag::{Diagnostic, Outcome, Warnings};
-use trodden::gate::{Files, Staging};
+use trodden::gate::{Files, Sources, Staging};
 use trodden::output::{
     Checked, CheckedInput, Finding, Page, Tool, check_json, comparison_csv, comparison_json, effort_json,
     finish, held_out_csv,
 };
-use trodden::plan::{StudyPlan, read, resolved};
+use trodden::plan::{GridPlan, StudyPlan, read, resolved};
 use trodden::records::{Rule, Sink};
 use trodden::study::{Needs, Notes, Options, gather, run};
-use trodden::units::Bytes;
+use trodden::units::{Bytes, Length};
 
 use super::args::{BuildArgs, CheckArgs, Common, CompareArgs};
 use super::progress::Bars;
@@ -81,17 +81,20 @@ pub fn check(args: &CheckArgs, common: &Common, voice: Voice) -> Outcome<()> {
     let bars = Bars::new(voice.shows_progress());
     let needs = Needs { sources: &files, observer: &bars, memory: memory(common), kept: false };
     let mut notes = Notes::default();
+    let target = opened.folder.join(&plan.output.folder);
+    let place = own_inputs(&opened, &target).and_then(|()| Staging::open(&target).map(drop));
     let gathered = gather(plan, &needs, &mut Nowhere, &mut notes);
     let outcome = gathered.and_then(|g| trodden::study::ready(plan, &g).map(|()| g));
+    let outcome = match (outcome, place) {
+        (Ok(_), Err(p)) => Err(p),
+        (Err(mut all), Err(p)) => {
+            all.0.extend(p.0);
+            Err(all)
+        }
+        (outcome, Ok(())) => outcome,
+    };
     bars_end(&bars);
-    let inputs = plan
-        .layers
-        .iter()
-        .map(|l| (l.file.as_str(), l.table.as_deref()))
-        .chain(plan.records.files.iter().map(|f| (f.as_str(), plan.records.table.as_deref())))
-        .filter_map(|(file, table)| trodden::gate::Sources::peek(&files, file, table).ok())
-        .map(|p| CheckedInput { file: p.file, kind: p.kind, crs: p.crs, extent: p.extent, count: p.count })
-        .collect();
+    let inputs = looks(plan, &files, outcome.as_ref().ok().map(|g| g.records.ledger.read()));
     let (problems, records) = match &outcome {
         Ok(g) => (Vec::new(), Some(g.records.ledger.lines())),
         Err(p) => (p.0.clone(), None),
@@ -111,6 +114,79 @@ pub fn check(args: &CheckArgs, common: &Common, voice: Voice) -> Outcome<()> {
         result(&super::write::check_words(&opened.name, plan, &checked, records.as_deref()));
     }
     outcome.map(drop)
+}
+
+/// A look at every input, the grid's first, each file and table once.
+fn looks(plan: &StudyPlan, files: &Files, rows: Option<u64>) -> Vec<CheckedInput> {
+    let grid = match &plan.grid {
+        GridPlan::Like(file) | GridPlan::Region { region: file, .. } => (file.as_str(), None),
+    };
+    let layers = plan.layers.iter().map(|l| (l.file.as_str(), l.table.as_deref()));
+    let records = plan.records.files.iter().map(|f| (f.as_str(), plan.records.table.as_deref()));
+    let mut all: Vec<(&str, Option<&str>)> = Vec::new();
+    for one in std::iter::once(grid).chain(layers).chain(records) {
+        if !all.contains(&one) {
+            all.push(one);
+        }
+    }
+    let look = |(file, table): (&str, Option<&str>)| {
+        let p = Sources::peek(files, file, table).ok()?;
+        let text = p.kind == "text";
+        let single = plan.records.files.len() == 1;
+        Some(CheckedInput {
+            file: table.map_or_else(|| p.file.clone(), |t| format!("{}, {t}", p.file)),
+            kind: p.kind,
+            crs: if text { plan.records.crs.clone() } else { p.crs },
+            extent: p.extent,
+            count: if text && single { rows } else { p.count },
+        })
+    };
+    all.into_iter().filter_map(look).collect()
+}
+
+/// Refuses a run whose outputs would replace its own inputs.
+fn own_inputs(opened: &Opened, target: &Path) -> Outcome<()> {
+    let Ok(target) = target.canonicalize() else { return Ok(()) }; // a new folder holds no input
+    let plan = &opened.plan;
+    let grid = match &plan.grid {
+        GridPlan::Like(file) | GridPlan::Region { region: file, .. } => file,
+    };
+    let inputs = plan.layers.iter().map(|l| &l.file).chain(&plan.records.files).chain([grid]);
+    for input in inputs {
+        let Ok(path) = opened.folder.join(input).canonicalize() else { continue };
+        let name = file_name(input);
+        if path.parent() == Some(&target) && is_output(&name) {
+            let text = format!("the input `{input}` would be replaced by an output of the same name");
+            return Err(Diagnostic::plan(
+                "output_is_input",
+                format!("{}: [output] folder", opened.name),
+                text,
+            )
+            .cure("write into another `folder`, or rename the input")
+            .into());
+        }
+    }
+    Ok(())
+}
+
+/// Whether a file of this name may be written by a run.
+fn is_output(name: &str) -> bool {
+    let known = [
+        "effort.tif",
+        "effort.json",
+        "held-out.csv",
+        "dropped.csv",
+        "report.html",
+        "manifest.json",
+        "comparison.json",
+        "comparison.csv",
+        "comparison.html",
+        "folds.tif",
+        "held-out-units.csv",
+        "kept.csv",
+    ];
+    known.contains(&name)
+        || (name.ends_with(".tif") && (name.starts_with("surface-") || name.starts_with("layer-")))
 }
 
 fn bars_end(bars: &Bars) {
@@ -134,6 +210,7 @@ fn study(
     wish: Wish,
 ) -> Outcome<(Finding, Run)> {
     let time = now();
+    own_inputs(opened, target)?;
     let files = Files::new(&opened.folder);
     let mut staging = Staging::open(target)?;
     let mut dropped = DroppedTable::create(&mut staging, &opened.plan.records.files)?;
@@ -149,7 +226,9 @@ fn study(
     let finding = outcome?;
     finding.warnings.iter().for_each(|w| voice.warning(w));
     dropped.finish()?;
-    let plan = resolved(&opened.plan);
+    let mut whole = opened.plan.clone();
+    whole.holdout.block = Some(Length::Metres(finding.blocks.side));
+    let plan = resolved(&whole);
     let mut inputs = files.inputs();
     inputs.insert(
         0,
@@ -185,7 +264,10 @@ fn target(wanted: Option<&PathBuf>, opened: &Opened) -> PathBuf {
 
 /// `trodden build`.
 pub fn build(args: &BuildArgs, common: &Common, voice: Voice) -> Outcome<()> {
-    let opened = open(&args.plan)?;
+    let mut opened = open(&args.plan)?;
+    if let Some(name) = &args.candidate {
+        opened.plan.surface.candidate = trodden::output::Choice::Named(name.clone());
+    }
     let target = target(args.output.as_ref(), &opened);
     let output = &opened.plan.output;
     let wish = Wish { candidate: args.candidate.as_deref(), kept: output.details };
@@ -196,14 +278,17 @@ pub fn build(args: &BuildArgs, common: &Common, voice: Voice) -> Outcome<()> {
         let page = Page {
             time: run.time.clone(),
             plan: run.plan_text(),
-            command: format!("trodden build {}", opened.name),
+            command: match &args.candidate {
+                Some(name) => format!("trodden build {} --candidate {name}", opened.name),
+                None => format!("trodden build {}", opened.name),
+            },
         };
         run.staging.write("effort.json", pretty(&effort_json(&finding, &finished)).as_bytes())?;
         run.staging.write("held-out.csv", held_out_csv(&finding).as_bytes())?;
         run.staging.write("report.html", trodden::output::report(&finding, &finished, &page).as_bytes())?;
         if output.details { details(run, &finding, output.compress) } else { Ok(()) }
     })?;
-    manifest(&mut run, &finding)?;
+    manifest(&mut run, &finding, &target)?;
     let placed = run.staging.commit()?;
     if common.json {
         result(&pretty(&effort_json(&finding, &finished)));
@@ -240,7 +325,7 @@ pub fn compare(args: &CompareArgs, common: &Common, voice: Voice) -> Outcome<()>
         run.staging.write("held-out.csv", held_out_csv(&finding).as_bytes())?;
         run.staging.write("comparison.html", trodden::output::comparison(&finding, &page).as_bytes())
     })?;
-    manifest(&mut run, &finding)?;
+    manifest(&mut run, &finding, &target)?;
     let placed = run.staging.commit()?;
     if common.json {
         result(&pretty(&comparison_json(&finding)));

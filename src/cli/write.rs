@@ -163,7 +163,7 @@ pub fn details(run: &mut Run, finding: &Finding, compress: Compress) -> Outcome<
 }
 
 /// Writes `manifest.json`, last of all.
-pub fn manifest(run: &mut Run, finding: &Finding) -> Outcome<()> {
+pub fn manifest(run: &mut Run, finding: &Finding, target: &Path) -> Outcome<()> {
     let list = |files: &[InputFile]| -> Vec<FileDigest> {
         files
             .iter()
@@ -171,8 +171,9 @@ pub fn manifest(run: &mut Run, finding: &Finding) -> Outcome<()> {
             .collect()
     };
     let names: Vec<String> = run.staging.names().to_vec();
-    let outputs: Vec<InputFile> =
+    let mut outputs: Vec<InputFile> =
         names.iter().filter_map(|n| trodden::gate::digest(&run.staging.path(n), n)).collect();
+    outputs.extend(earlier(target, &names));
     let json = manifest_json(&Manifest {
         tool: &finding.tool,
         plan: serde_json::to_value(&run.plan).unwrap_or_default(),
@@ -184,6 +185,23 @@ pub fn manifest(run: &mut Run, finding: &Finding) -> Outcome<()> {
     });
     let text = serde_json::to_string_pretty(&json).unwrap_or_default();
     run.staging.write("manifest.json", text.as_bytes())
+}
+
+/// Outputs that an earlier run of another command left in the folder, where they still are as its
+/// manifest says.
+fn earlier(target: &Path, written: &[String]) -> Vec<InputFile> {
+    let text = std::fs::read_to_string(target.join("manifest.json")).unwrap_or_default();
+    let manifest: serde_json::Value = serde_json::from_str(&text).unwrap_or_default();
+    let listed = manifest["outputs"].as_array().cloned().unwrap_or_default();
+    listed
+        .iter()
+        .filter_map(|o| {
+            let name =
+                o["file"].as_str().filter(|n| !written.iter().any(|w| w == n) && !n.contains(['/', '\\']))?;
+            let found = trodden::gate::digest(&target.join(name), name)?;
+            (o["sha256"].as_str() == Some(found.sha256.as_str())).then_some(found)
+        })
+        .collect()
 }
 
 /// A value with its interval.
@@ -229,7 +247,7 @@ fn opening(finding: &Finding) -> String {
     let g = finding.region.grid();
     format!(
         "{}\n  grid      {} x {} cells of {}, {} inside, {}\n  records   {} read, {} kept, {} dropped; {} {} in {} places\n  \
-         held out  {} in {} folds; intervals from {} blocks of {}\n\n{}\n",
+         held out  {} in {} folds; intervals from {} blocks of {}{}\n\n{}\n",
         finding.title,
         g.columns,
         g.rows,
@@ -246,6 +264,7 @@ fn opening(finding: &Finding) -> String {
         finding.folds.count,
         finding.blocks.count,
         finding.blocks.side,
+        if finding.holdout.block.is_none() { " (a tenth of the region's larger side)" } else { "" },
         standings(finding),
     )
 }

@@ -24,7 +24,9 @@ pub(super) fn describe(srs: &SpatialRef) -> Option<Crs> {
     } else {
         return None;
     };
-    let label = srs.authority().ok().or_else(|| srs.name()).unwrap_or_else(|| "unnamed".into());
+    let named = srs.name().filter(|n| !["unknown", "unnamed"].contains(&n.to_lowercase().as_str()));
+    let label =
+        srs.authority().ok().or(named).or_else(|| srs.to_proj4().ok()).unwrap_or_else(|| "unnamed".into());
     Some(Crs { wkt: srs.to_wkt().ok()?, label, kind })
 }
 

@@ -44,16 +44,36 @@ pub(super) fn no_way(file: &str, to: &str) -> Diagnostic {
 /// Applies an attribute filter.
 pub(super) fn filter(layer: &mut Layer, file: &str, query: Option<&str>) -> Outcome<()> {
     let Some(query) = query else { return Ok(()) };
-    let columns: Vec<String> = layer.defn().fields().map(|f| format!("`{}`", f.name())).collect();
-    layer.set_attribute_filter(query).map_err(|e| {
-        Diagnostic::plan(
-            "bad_where",
-            format!("{file}, layer {}", layer.name()),
-            format!("`where` does not parse: {e}"),
-        )
-        .cure(format!("the columns are {}", columns.join(", ")))
-        .into()
-    })
+    let names = columns(layer);
+    let place = format!("{file}, layer {}", layer.name());
+    layer.set_attribute_filter(query).map_err(|e| bad_where(&place, &names, &e.to_string()).into())
+}
+
+fn columns(layer: &Layer) -> String {
+    layer.defn().fields().map(|f| format!("`{}`", f.name())).collect::<Vec<_>>().join(", ")
+}
+
+fn bad_where(place: &str, columns: &str, error: &str) -> Diagnostic {
+    Diagnostic::plan("bad_where", place, format!("`where` does not parse: {error}"))
+        .cure(format!("the columns are {columns}"))
+}
+
+/// Forgets what GDAL last complained of.
+fn forget_errors() {
+    // SAFETY: resets a number and a text that GDAL owns
+    unsafe { gdal_sys::CPLErrorReset() };
+}
+
+/// What GDAL complained of since, where it was an error.
+fn last_error() -> Option<String> {
+    // SAFETY: both calls read what GDAL owns for this thread; the text is copied at once
+    unsafe {
+        if gdal_sys::CPLGetLastErrorType() < gdal_sys::CPLErr::CE_Failure {
+            return None;
+        }
+        let text = std::ffi::CStr::from_ptr(gdal_sys::CPLGetLastErrorMsg());
+        Some(text.to_string_lossy().into_owned())
+    }
 }
 
 /// What was left out of a layer.
@@ -80,8 +100,18 @@ pub(super) fn read(
     let to = crs::parse(&grid.crs.wkt, "grid")?;
     let transform = crs::transform(&from, &to).ok_or_else(|| no_way(file, &grid.crs.label))?;
     let mut reader = Reader { file, parts: Vec::new(), polygons: Vec::new(), left: Left::default() };
+    forget_errors();
     for feature in layer.features() {
         reader.feature(&feature)?;
+    }
+    if let Some(error) = last_error() {
+        // a filter may be understood only when the first feature is asked for
+        return Err(match &plan.filter {
+            Some(_) => bad_where(&place, &columns(&layer), &error),
+            None => Diagnostic::input("unreadable", place, format!("cannot be read to its end: {error}"))
+                .cure("check that the file is whole"),
+        }
+        .into());
     }
     let Reader { parts, polygons, mut left, .. } = reader;
     let shapes = turned(parts, &transform, &mut left);

@@ -100,7 +100,15 @@ impl Files {
         let path = self.path(file)?;
         let options = DatasetOptions { open_flags: flags, ..DatasetOptions::default() };
         Dataset::open_ex(&path, options).map_err(|e| {
-            Diagnostic::input(rule, file, format!("is {what} ({e})"))
+            let said = e.to_string();
+            let why = if said.contains("returned a NULL pointer") && said.contains("''")
+                || said.contains("not recognized")
+            {
+                "in no format known here".to_owned()
+            } else {
+                said
+            };
+            Diagnostic::input(rule, file, format!("is {what} ({why})"))
                 .cure("check the path, and that the file is whole")
                 .into()
         })

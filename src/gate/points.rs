@@ -3,6 +3,7 @@
 use gdal::vector::{Feature, FieldValue, LayerAccess};
 
 use crate::diag::{Diagnostic, Observer, Outcome};
+use crate::grid::CrsKind;
 use crate::records::{Content, Place, RecordsPlan, Row};
 
 use super::crs;
@@ -24,11 +25,11 @@ pub(super) fn read(
     let geometries = layer.defn().geom_fields().next().is_some()
         && !plan.columns.stated.iter().any(|s| s == "longitude" || s == "latitude");
     let columns = Columns::find(&names, plan, file, geometries)?;
-    let datum = if geometries {
+    let own = if geometries {
         let srs = layer.spatial_ref().ok_or_else(|| no_crs(file))?;
-        crs::describe(&srs).ok_or_else(|| no_crs(file))?.wkt
+        Some(crs::describe(&srs).ok_or_else(|| no_crs(file))?)
     } else {
-        String::new()
+        None
     };
     observer.begin(&format!("read {file}"), layer.try_feature_count());
     for feature in layer.features() {
@@ -38,8 +39,9 @@ pub(super) fn read(
         let line = feature.fid().unwrap_or(0);
         let point = if geometries { Some(place(&feature, file)?) } else { None };
         let mut fields = columns.fields(at, point, &named);
-        if geometries {
-            fields.datum = &datum;
+        if let Some(own) = &own {
+            fields.datum = &own.wkt;
+            fields.degrees = Some(own.kind == CrsKind::Geographic);
         }
         each(&Row { file: index, line, content: Content::Fields(fields) })?;
         observer.advance(1);

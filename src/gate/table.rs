@@ -46,6 +46,8 @@ impl Columns {
     /// Finds the plan's columns among those of a file; `points`: the place comes from a geometry.
     pub(super) fn find(names: &[String], plan: &RecordsPlan, file: &str, points: bool) -> Outcome<Self> {
         let columns = &plan.columns;
+        let short = file.to_lowercase().ends_with(".shp");
+        let position = |names: &[String], name: &str| position(names, name, short);
         let mut missing = Vec::new();
         let mut optional = |key: &str, name: &str| {
             let at = position(names, name);
@@ -69,11 +71,17 @@ impl Columns {
             if points { None } else { Some((required(&columns.longitude), required(&columns.latitude))) };
         let filters: Vec<Option<usize>> =
             plan.keep.iter().chain(&plan.leave_out).map(|f| required(&f.column)).collect();
+        let year_month_day = ["year", "month", "day"].map(|n| position(names, n));
+        if plan.dates.is_some() && date.is_none() && year_month_day[0].is_none() {
+            missing.push(columns.date.clone());
+        }
+        if plan.max_uncertainty.is_some() && uncertainty.is_none() {
+            missing.push(columns.uncertainty.clone());
+        }
         if !missing.is_empty() {
             return Err(missing_columns(file, &missing, names).into());
         }
         let other = |name: &str| position(names, name);
-        let year_month_day = ["year", "month", "day"].map(other);
         if plan.count == crate::records::Count::Visits
             && observer.is_none()
             && date.is_none()
@@ -113,6 +121,7 @@ impl Columns {
             uncertainty: text(self.uncertainty),
             status: text(self.status),
             individuals: text(self.individuals),
+            degrees: None,
             datum: text(self.datum),
             filters,
         }
@@ -124,12 +133,19 @@ impl Columns {
     }
 }
 
-/// A column by its exact name, else by its name in another case when only one fits.
-fn position(names: &[String], name: &str) -> Option<usize> {
-    names.iter().position(|n| n == name).or_else(|| {
-        let mut fits = names.iter().enumerate().filter(|(_, n)| n.eq_ignore_ascii_case(name)).map(|(i, _)| i);
-        fits.next().filter(|_| fits.next().is_none())
-    })
+/// A column by its exact name, else by its name in another case when only one fits; a shapefile cuts
+/// names to ten characters.
+fn position(names: &[String], name: &str, short: bool) -> Option<usize> {
+    let only = |fits: &dyn Fn(&str) -> bool| {
+        let mut found = names.iter().enumerate().filter(|(_, n)| fits(n)).map(|(i, _)| i);
+        found.next().filter(|_| found.next().is_none())
+    };
+    let cut = name.get(..10).unwrap_or(name);
+    names
+        .iter()
+        .position(|n| n == name)
+        .or_else(|| only(&|n| n.eq_ignore_ascii_case(name)))
+        .or_else(|| if short { only(&|n| n.eq_ignore_ascii_case(cut)) } else { None })
 }
 
 fn listed(names: &[String]) -> String {
@@ -140,7 +156,9 @@ fn listed(names: &[String]) -> String {
 
 fn missing_columns(file: &str, missing: &[String], names: &[String]) -> Diagnostic {
     let text = format!("has no column {}; it has {}", listed(missing), listed(names));
-    Diagnostic::input("missing_column", format!("{file}:1"), text).cure("name the columns in [records]")
+    Diagnostic::input("missing_column", format!("{file}:1"), text).cure(
+        "name the columns in [records], or leave out what needs them (`dates`, `max_uncertainty`, `keep`)",
+    )
 }
 
 fn no_visits(plan: &RecordsPlan, file: &str, names: &[String]) -> Diagnostic {
@@ -167,16 +185,22 @@ pub(super) fn read(
     observer.begin(&format!("read {file}"), std::fs::metadata(path).ok().map(|m| m.len()));
     let mut record = ByteRecord::new();
     let mut told = 0;
+    let mut spans = (0, 0, true);
     let mut filters: Vec<&str> = Vec::new();
     while reader.next(&mut record, file)? {
-        let line = record.position().map_or(0, csv::Position::line);
-        let byte = record.position().map_or(0, csv::Position::byte);
+        let line = reader.line_of(&record);
+        let byte = reader.reader.position().byte();
         if byte - told > 1 << 20 {
             observer.advance(byte - told);
             told = byte;
         }
+        if record.len() == 1 && record[0].trim_ascii().is_empty() && reader.names.len() > 1 {
+            continue; // an empty line is no row
+        }
         let row = |content| Row { file: index, line, content };
-        match readable(&record, reader.names.len()) {
+        let read = readable(&record, reader.names.len());
+        spans = (line, reader.reader.position().line(), read.is_ok());
+        match read {
             Err(why) => each(&row(Content::Unreadable(&why)))?,
             Ok(text) => {
                 let at = |column: usize| {
@@ -190,6 +214,7 @@ pub(super) fn read(
             }
         }
     }
+    reader.all_closed(file, spans)?;
     observer.end();
     Ok(())
 }
@@ -209,6 +234,9 @@ fn readable(record: &ByteRecord, columns: usize) -> Result<&str, String> {
 struct Text {
     reader: Reader<BufReader<File>>,
     names: Vec<String>,
+    quoted: bool,
+    /// How the file ends: with a line feed, and with a quote before it.
+    end: (bool, bool),
 }
 
 impl Text {
@@ -239,11 +267,10 @@ impl Text {
         source.seek(std::io::SeekFrom::Start(if bom { 3 } else { 0 })).map_err(broken)?;
         let mut builder = ReaderBuilder::new();
         builder.delimiter(separator).quoting(quoted).flexible(true).has_headers(false);
-        if !quoted {
-            // a lone carriage return inside a field must not end the row
-            builder.terminator(Terminator::Any(b'\n'));
-        }
-        let mut text = Self { reader: builder.from_reader(source), names: Vec::new() };
+        // a lone carriage return inside a field must not end the row; one at a row's end is cut off
+        builder.terminator(Terminator::Any(b'\n'));
+        let end = ending(path).map_err(broken)?;
+        let mut text = Self { reader: builder.from_reader(source), names: Vec::new(), quoted, end };
         let mut record = ByteRecord::new();
         if !text.next(&mut record, file)? {
             return Err(Diagnostic::input("empty_file", file, "holds no header")
@@ -255,6 +282,27 @@ impl Text {
         Ok(text)
     }
 
+    /// The line on which the row just read begins: the reader stands behind it.
+    fn line_of(&self, record: &ByteRecord) -> u64 {
+        let inside = record.as_slice().iter().filter(|b| **b == b'\n').count() as u64;
+        let cut_off = self.reader.is_done() && !self.end.0;
+        self.reader.position().line() - inside - u64::from(!cut_off)
+    }
+
+    /// Refuses a file whose last row runs over several lines and does not end as a row should: a quote
+    /// was opened and never closed, and everything after it was swallowed.
+    fn all_closed(&self, file: &str, (from, to, whole): (u64, u64, bool)) -> Outcome<()> {
+        if !self.quoted || to <= from + 1 || (whole && self.end.1) {
+            return Ok(());
+        }
+        let text = format!(
+            "a quote opened in the row of line {from} is never closed: the rest of the file is inside it"
+        );
+        Err(Diagnostic::input("unclosed_quote", format!("{file}:{from}"), text)
+            .cure("mend the row, or set `quotes = \"none\"` in [records] if quotes are ordinary characters here")
+            .into())
+    }
+
     fn next(&mut self, record: &mut ByteRecord, file: &str) -> Outcome<bool> {
         self.reader.read_byte_record(record).map_err(|e| {
             Diagnostic::input("unreadable", file, format!("cannot be read: {e}"))
@@ -262,6 +310,16 @@ impl Text {
                 .into()
         })
     }
+}
+
+/// Whether a file ends with a line feed, and whether the last thing before it is a quote.
+fn ending(path: &Path) -> std::io::Result<(bool, bool)> {
+    let mut file = File::open(path)?;
+    let length = file.metadata()?.len();
+    file.seek(std::io::SeekFrom::Start(length.saturating_sub(64)))?;
+    let mut tail = Vec::new();
+    file.read_to_end(&mut tail)?;
+    Ok((tail.ends_with(b"\n"), tail.trim_ascii_end().ends_with(b"\"")))
 }
 
 /// The separator that stands most often in the header, outside quotes.

@@ -420,7 +420,8 @@ impl<'a> Model<'a> {
             }
         })?;
         let name = term.form.parameters()[k];
-        let text = format!("`{}.{name}` lies at an end of its range ({})", term.layer, term.external(at[k]));
+        let text =
+            format!("`{}.{name}` lies at an end of its range ({:.4})", term.layer, term.external(at[k]));
         Some(
             Diagnostic::plan("parameter_at_bound", &self.place, text)
                 .cure("give the parameter, or choose a curve of another form"),

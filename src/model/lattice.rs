@@ -126,19 +126,26 @@ impl Lattice {
     }
 
     fn globe_edges(&self, sigma: f64, spots: &[Spot]) -> Vec<f64> {
-        spots
+        let mut by_row: Vec<Vec<(usize, usize)>> = vec![Vec::new(); self.mass.nrows()];
+        spots.iter().enumerate().for_each(|(i, s)| by_row[s.0].push((i, s.1)));
+        let sums: Vec<Vec<(usize, f64)>> = by_row
             .par_iter()
-            .map(|&(row, column)| {
-                self.rows_in_reach(row, sigma)
-                    .map(|other| {
-                        let line = self.line(row, other, sigma, Power::One);
-                        let mut total = 0.0;
-                        self.along(column, &line, |c, k| total += k * self.mass[(other, c)]);
-                        total
-                    })
-                    .sum()
+            .enumerate()
+            .map(|(row, here)| {
+                let mut sums: Vec<(usize, f64)> = here.iter().map(|(i, _)| (*i, 0.0)).collect();
+                for other in self.rows_in_reach(row, sigma).filter(|_| !here.is_empty()) {
+                    let line = self.line(row, other, sigma, Power::One);
+                    let masses = self.mass.row(other);
+                    for ((_, column), (_, sum)) in here.iter().zip(&mut sums) {
+                        self.along(*column, &line, |c, k| *sum += k * masses[c]);
+                    }
+                }
+                sums
             })
-            .collect()
+            .collect();
+        let mut edges = vec![0.0; spots.len()];
+        sums.into_iter().flatten().for_each(|(i, sum)| edges[i] = sum);
+        edges
     }
 
     fn globe_spread(&self, sigma: f64, spots: &[Spot], weights: &[f64], power: Power) -> Array2<f64> {

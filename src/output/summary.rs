@@ -17,7 +17,7 @@ fn estimate(e: &Estimate) -> Value {
 
 fn grid(g: &Grid, cells_inside: Option<usize>, area_m2: Option<f64>) -> Value {
     json!({
-        "crs": g.crs.label, "columns": g.columns, "rows": g.rows, "transform": g.transform,
+        "crs": g.crs.label, "crs_wkt": g.crs.wkt, "columns": g.columns, "rows": g.rows, "transform": g.transform,
         "metric": g.metric().word(), "cells_inside": cells_inside, "area_km2": area_m2.map(|a| a / 1e6),
     })
 }

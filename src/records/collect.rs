@@ -75,6 +75,8 @@ pub struct Collector<'a> {
 struct Hints {
     swapped: u64,
     commas: u64,
+    /// Coordinates too large for degrees, and the first of them.
+    large: (u64, String),
     extent: Option<[f64; 4]>,
 }
 
@@ -135,7 +137,7 @@ impl<'a> Collector<'a> {
 
     fn take(&mut self, row: &Row, fields: &Fields) -> Outcome<()> {
         self.dates[precision(date_of(fields))] += 1;
-        match screen(fields, self.plan, self.degrees) {
+        match screen(fields, self.plan, fields.degrees.unwrap_or(self.degrees)) {
             Err((rule, detail)) => {
                 if rule == Rule::ImpossibleCoordinate {
                     self.hints.note(&detail);
@@ -349,7 +351,7 @@ impl<'a> Collector<'a> {
     /// A warning about coordinates that look swapped or written with a decimal comma.
     fn smells(&self) -> Option<Diagnostic> {
         let cure = self.hints.cure()?;
-        let count = self.hints.swapped.max(self.hints.commas);
+        let count = self.hints.swapped.max(self.hints.commas).max(self.hints.large.0);
         (count * 100 >= self.ledger.read()).then(|| {
             Diagnostic::input(
                 "coordinates_swapped",
@@ -367,6 +369,12 @@ impl Hints {
         let mut parts = detail.split(' ').map(str::parse::<f64>);
         if let (Some(Ok(x)), Some(Ok(y))) = (parts.next(), parts.next()) {
             self.swapped += u64::from(x.abs() <= 90.0 && y.abs() > 90.0 && y.abs() <= 180.0);
+            if x.abs() > 360.0 && y.abs() > 180.0 {
+                self.large.0 += 1;
+                if self.large.1.is_empty() {
+                    detail.clone_into(&mut self.large.1);
+                }
+            }
         }
     }
 
@@ -388,6 +396,11 @@ impl Hints {
             Some(format!(
                 "{} records write numbers with a decimal comma: write them with a point",
                 self.commas
+            ))
+        } else if self.large.0 > 0 {
+            Some(format!(
+                "{} records have coordinates too large for degrees (the first: {}): state their CRS as `crs` in [records]",
+                self.large.0, self.large.1
             ))
         } else {
             None

@@ -11,6 +11,7 @@ pub struct Row<'a> {
 }
 
 /// What a row holds.
+#[allow(clippy::large_enum_variant, reason = "one row lives at a time, on the stack")]
 pub enum Content<'a> {
     /// Nothing that can be read, and why.
     Unreadable(&'a str),
@@ -52,6 +53,8 @@ pub struct Fields<'a> {
     pub status: &'a str,
     /// Number of individuals.
     pub individuals: &'a str,
+    /// Whether the coordinates are degrees; `None`: as the plan's CRS says.
+    pub degrees: Option<bool>,
     /// Geodetic datum of the coordinates; empty: the plan's.
     pub datum: &'a str,
     /// Columns named in `keep`, in the plan's order, then those in `leave_out`.

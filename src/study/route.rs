@@ -20,8 +20,6 @@ use super::gather::{Gathered, Needs, Notes, gather};
 const BLOCK_PART: f64 = 0.1;
 /// Classes of a layer in its curve of observed to available.
 const CLASSES: usize = 20;
-/// Share of the weight on thinly supported cells from which a warning is due.
-const THIN_SHARE: f64 = 0.01;
 
 /// What the caller wants beside the plan.
 pub struct Options<'a> {
@@ -137,6 +135,7 @@ impl Work<'_> {
         let scores = notes
             .stage(format!("check {}", plan.name), |_| self.check(plan, &mut || needs.observer.advance(1)))?;
         needs.observer.end();
+        notes.warnings.0.extend(no_weight(&plan.name, &scores));
         notes.warnings.0.extend(fitted.warnings.iter().cloned());
         let odds = odds(plan, self.layers, &all);
         Ok(CandidateFinding { name: plan.name.clone(), kind: plan.kind.clone(), fitted, scores, odds })
@@ -174,6 +173,17 @@ fn odds(candidate: &CandidatePlan, layers: &ProxyStack, training: &Training) -> 
     }
 }
 
+/// Held-out units where a candidate left no weight at all, or none but the floor's.
+fn no_weight(name: &str, scores: &CandidateScores) -> Option<Diagnostic> {
+    let count = scores.units.iter().filter(|u| u.density <= 0.0).count();
+    (count > 0).then(|| {
+        let text = format!("{count} held-out units lie in cells to which the candidate gives no weight");
+        Diagnostic::plan("no_weight", format!("candidate `{name}`"), text).cure(
+            "its log score is minus infinity: set `floor` in [surface] above 0, or use a wider bandwidth",
+        )
+    })
+}
+
 fn no_candidate(name: &str, plan: &StudyPlan) -> Diagnostic {
     let names: Vec<String> = plan.candidates.iter().map(|c| format!("`{}`", c.name)).collect();
     Diagnostic::plan("unknown_candidate", "--candidate", format!("the plan has no candidate `{name}`"))
@@ -185,7 +195,8 @@ fn thin_support(c: &CandidateFinding, region: &Region, wanted: f64, warnings: &m
     let Some(support) = &c.fitted.support else { return };
     let thin = (0..support.len()).filter(|i| support[*i] < wanted);
     let weight = sum(thin.map(|i| c.fitted.density[i] * region.areas()[i])) / region.area();
-    if weight >= THIN_SHARE {
+    let least = support.iter().zip(&c.fitted.density).filter(|(_, d)| **d >= 0.01).map(|(s, _)| *s);
+    if least.fold(f64::INFINITY, f64::min) < wanted {
         let text = format!(
             "{:.1} % of the weight lies in cells carried by fewer than {wanted} distinct places",
             weight * 100.0

@@ -91,6 +91,7 @@ fn advice(f: &Finding, score: &Estimate) -> (&'static str, String) {
             "no",
             "With these records it can’t be told from an even spread: weighting by it would add noise rather than take a pattern out.".into(),
         ),
+        None if score.value == Some(f64::NEG_INFINITY) => ("no", "It gave places with held-out records no weight at all, which no score can forgive: raise `floor` above 0.".into()),
         None => ("no", "No interval can be given: too few blocks hold records to tell how sure this is.".into()),
     }
 }

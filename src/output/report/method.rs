@@ -242,7 +242,7 @@ fn checked(f: &Finding, works: &mut Vec<Work>) -> String {
 
 fn delivered(f: &Finding) -> String {
     let per = match f.surface.per {
-        Per::Cell => "per cell (the chance that a background point falls in it)",
+        Per::Cell => "per cell (in proportion to the chance that a background point falls in it)",
         Per::Km2 => "per unit of area",
     };
     let scale = match f.surface.scale {

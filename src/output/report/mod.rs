@@ -104,7 +104,7 @@ fn grid_facts(f: &Finding) -> Vec<Value> {
 
 fn facts(f: &Finding, finished: &Finished) -> Vec<Value> {
     let value = match f.surface.per {
-        Per::Cell => "effort by cell: the chance that a background point falls in it",
+        Per::Cell => "effort by cell: in proportion to the chance that a background point falls in it",
         Per::Km2 => "effort per unit of area",
     };
     let scale = match f.surface.scale {

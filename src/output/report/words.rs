@@ -37,7 +37,7 @@ pub(super) fn name(text: &str) -> String {
 /// A number with so many decimals, thousands set off, and a true minus.
 pub(super) fn decimals(value: f64, digits: usize) -> String {
     if !value.is_finite() {
-        return if value.is_nan() { "–".into() } else { "∞".into() };
+        return if value.is_nan() { "–" } else { if value > 0.0 { "∞" } else { "−∞" } }.into();
     }
     let text = format!("{:.digits$}", value.abs());
     let (whole, part) = text.split_once('.').map_or((text.as_str(), None), |(w, p)| (w, Some(p)));
