@@ -187,7 +187,11 @@ pub(super) fn read(
     let mut told = 0;
     let mut spans = (0, 0, true);
     let mut filters: Vec<&str> = Vec::new();
-    while reader.next(&mut record, file)? {
+    loop {
+        let begun = reader.reader.position().line();
+        if !reader.next(&mut record, file)? {
+            break;
+        }
         let line = reader.line_of(&record);
         let byte = reader.reader.position().byte();
         if byte - told > 1 << 20 {
@@ -199,7 +203,7 @@ pub(super) fn read(
         }
         let row = |content| Row { file: index, line, content };
         let read = readable(&record, reader.names.len());
-        spans = (line, reader.reader.position().line(), read.is_ok());
+        spans = (begun, reader.reader.position().line(), read.is_ok());
         match read {
             Err(why) => each(&row(Content::Unreadable(&why)))?,
             Ok(text) => {
@@ -235,6 +239,8 @@ struct Text {
     reader: Reader<BufReader<File>>,
     names: Vec<String>,
     quoted: bool,
+    /// Bytes after the byte-order mark.
+    length: u64,
     /// How the file ends: with a line feed, and with a quote before it.
     end: (bool, bool),
 }
@@ -270,7 +276,8 @@ impl Text {
         // a lone carriage return inside a field must not end the row; one at a row's end is cut off
         builder.terminator(Terminator::Any(b'\n'));
         let end = ending(path).map_err(broken)?;
-        let mut text = Self { reader: builder.from_reader(source), names: Vec::new(), quoted, end };
+        let length = std::fs::metadata(path).map_err(broken)?.len() - if bom { 3 } else { 0 };
+        let mut text = Self { reader: builder.from_reader(source), names: Vec::new(), quoted, length, end };
         let mut record = ByteRecord::new();
         if !text.next(&mut record, file)? {
             return Err(Diagnostic::input("empty_file", file, "holds no header")
@@ -285,7 +292,7 @@ impl Text {
     /// The line on which the row just read begins: the reader stands behind it.
     fn line_of(&self, record: &ByteRecord) -> u64 {
         let inside = record.as_slice().iter().filter(|b| **b == b'\n').count() as u64;
-        let cut_off = self.reader.is_done() && !self.end.0;
+        let cut_off = self.reader.position().byte() >= self.length && !self.end.0;
         self.reader.position().line() - inside - u64::from(!cut_off)
     }
 

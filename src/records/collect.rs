@@ -399,7 +399,7 @@ impl Hints {
             ))
         } else if self.large.0 > 0 {
             Some(format!(
-                "{} records have coordinates too large for degrees (the first: {}): state their CRS as `crs` in [records]",
+                "{} records have coordinates too large for degrees (the first: {}): state their CRS as `crs` in [records] (a vector file: write it into the file with `ogr2ogr -a_srs`)",
                 self.large.0, self.large.1
             ))
         } else {

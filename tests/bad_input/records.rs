@@ -162,3 +162,46 @@ fn what_cannot_be_read_is_dropped_and_counted() {
     assert_eq!((lines.len(), lines[0]), (7, "file,line,rule,detail"));
     says(lines[1], &["records.tsv,242,unreadable_row"]);
 }
+
+/// Lines count from 1 with the header, whatever ends them; empty lines count and are no rows.
+#[test]
+fn lines_are_those_of_the_file() {
+    for (end, last) in [("\n", "\n"), ("\r\n", "\r\n"), ("\n", ""), ("\r\n", "")] {
+        let world = World::new();
+        let text = fs::read_to_string(world.path("records.tsv")).unwrap();
+        let mut lines: Vec<String> = text.lines().map(|l| l.replace('\t', ",")).collect();
+        lines.insert(3, String::new());
+        let fields = lines[0].split(',').count();
+        lines.push(vec!["x"; fields - 1].join(","));
+        let line = lines.len();
+        fs::write(world.path("records.csv"), lines.join(end) + last).unwrap();
+        world.change(&[("records.tsv", "records.csv")]);
+        world.run(&["build", "plan.toml"]).ended(0);
+        let dropped = fs::read_to_string(world.path("out/dropped.csv")).unwrap();
+        assert!(dropped.contains(&format!("records.csv,{line},unreadable_row")), "line {line}: {dropped}");
+    }
+}
+
+#[test]
+fn a_quote_that_is_never_closed() {
+    for last in ["\n", ""] {
+        let world = World::new();
+        let text = fs::read_to_string(world.path("records.tsv")).unwrap();
+        let mut lines: Vec<String> = text.lines().map(|l| l.replace('\t', ",")).collect();
+        lines[20].insert(0, '"');
+        fs::write(world.path("records.csv"), lines.join("\n") + last).unwrap();
+        world.change(&[("records.tsv", "records.csv")]);
+        refused(&world, 3, &["records.csv:21", "quote", "never closed"]);
+    }
+}
+
+/// An output never replaces an input of the same plan.
+#[test]
+fn outputs_do_not_replace_inputs() {
+    let world = World::new();
+    fs::copy(world.path("records.tsv"), world.path("dropped.csv")).unwrap();
+    world.change(&[("records.tsv", "dropped.csv")]);
+    let before = fs::read(world.path("dropped.csv")).unwrap();
+    world.run(&["build", "plan.toml", "-o", "."]).ended(2);
+    assert_eq!(fs::read(world.path("dropped.csv")).unwrap(), before);
+}
