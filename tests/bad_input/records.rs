@@ -174,7 +174,7 @@ fn lines_are_those_of_the_file() {
         let fields = lines[0].split(',').count();
         lines.push(vec!["x"; fields - 1].join(","));
         let line = lines.len();
-        fs::write(world.path("records.csv"), lines.join(end) + last).unwrap();
+        world.put("records.csv", &(lines.join(end) + last));
         world.change(&[("records.tsv", "records.csv")]);
         world.run(&["build", "plan.toml"]).ended(0);
         let dropped = fs::read_to_string(world.path("out/dropped.csv")).unwrap();
@@ -189,7 +189,7 @@ fn a_quote_that_is_never_closed() {
         let text = fs::read_to_string(world.path("records.tsv")).unwrap();
         let mut lines: Vec<String> = text.lines().map(|l| l.replace('\t', ",")).collect();
         lines[20].insert(0, '"');
-        fs::write(world.path("records.csv"), lines.join("\n") + last).unwrap();
+        world.put("records.csv", &(lines.join("\n") + last));
         world.change(&[("records.tsv", "records.csv")]);
         refused(&world, 3, &["records.csv:21", "quote", "never closed"]);
     }
