@@ -20,8 +20,18 @@ pub(super) struct Lattice {
 
 /// Plane or globe.
 enum Form {
-    Plane { width: f64, height: f64 },
-    Globe { latitudes: Vec<f64>, step: f64, wraps: bool },
+    Plane {
+        width: f64,
+        height: f64,
+    },
+    Globe {
+        latitudes: Vec<f64>,
+        /// Cosine of each row's latitude.
+        cosines: Vec<f64>,
+        /// sin²(Δλ/2) at column distances 0, 1, ….
+        halves: Vec<f64>,
+        wraps: bool,
+    },
 }
 
 /// A kernel power: densities use the kernel itself, supports its square.
@@ -102,12 +112,13 @@ impl Lattice {
                 let tap = |t: &[f64], d: usize| t.get(d).copied().unwrap_or(0.0);
                 tap(&taps.down, a.0.abs_diff(b.0)) * tap(&taps.across, a.1.abs_diff(b.1)) / taps.area
             }
-            Form::Globe { latitudes, step, wraps } => {
+            Form::Globe { latitudes, cosines, halves, wraps } => {
                 let mut apart = a.1.abs_diff(b.1);
                 if *wraps {
                     apart = apart.min(self.columns - apart);
                 }
-                on_globe(latitudes[a.0], latitudes[b.0], apart as f64 * step, taps.sigma)
+                let rows = half(latitudes[b.0] - latitudes[a.0]);
+                on_globe(rows + cosines[a.0] * cosines[b.0] * halves[apart], taps.sigma)
             }
         }
     }
@@ -180,10 +191,15 @@ impl Lattice {
 
     /// Kernel values from a spot of one row to another row, at column distances 0, 1, ….
     fn line(&self, from: usize, to: usize, sigma: f64, power: Power) -> Vec<f64> {
-        let Form::Globe { latitudes, step, wraps } = &self.form else { unreachable!("planes have no lines") };
+        let Form::Globe { latitudes, cosines, halves, wraps } = &self.form else {
+            unreachable!("planes have no lines")
+        };
         let most = if *wraps { self.columns / 2 } else { self.columns - 1 };
-        (0..=most)
-            .map(|d| on_globe(latitudes[from], latitudes[to], d as f64 * step, sigma))
+        let rows = half(latitudes[to] - latitudes[from]);
+        let ring = cosines[from] * cosines[to];
+        halves[..=most]
+            .iter()
+            .map(|half| on_globe(rows + ring * half, sigma))
             .take_while(|k| *k > 0.0)
             .map(|k| if power == Power::Two { k * k } else { k })
             .collect()
@@ -225,14 +241,23 @@ fn form(grid: &Grid, step: usize, rows: usize) -> Form {
             let (width, height) = grid.cell_sides(0);
             Form::Plane { width: width * step as f64, height: height * step as f64 }
         }
-        Metric::Geodesic => Form::Globe {
-            latitudes: (0..rows)
-                .map(|r| grid.y_at((r as f64 + 0.5) * step as f64).clamp(-90.0, 90.0))
-                .collect(),
-            step: grid.transform[1] * step as f64,
-            wraps: grid.wraps() && grid.columns.is_multiple_of(step),
-        },
+        Metric::Geodesic => {
+            let middle = |r: usize| grid.y_at((r as f64 + 0.5) * step as f64).clamp(-90.0, 90.0);
+            let latitudes: Vec<f64> = (0..rows).map(middle).collect();
+            let apart = grid.transform[1] * step as f64;
+            Form::Globe {
+                cosines: latitudes.iter().map(|l| float::cos(l.to_radians())).collect(),
+                halves: (0..grid.columns.div_ceil(step)).map(|d| half(d as f64 * apart)).collect(),
+                latitudes,
+                wraps: grid.wraps() && grid.columns.is_multiple_of(step),
+            }
+        }
     }
+}
+
+/// sin² of half an angle in degrees.
+fn half(degrees: f64) -> f64 {
+    float::square(float::sin(degrees.to_radians() / 2.0))
 }
 
 fn convolve(field: &Array2<f64>, sigma: f64, sides: (f64, f64), power: Power) -> Array2<f64> {
@@ -250,12 +275,9 @@ fn convolve(field: &Array2<f64>, sigma: f64, sides: (f64, f64), power: Power) ->
     out
 }
 
-/// Gaussian of the great-circle distance, per m²; 0 beyond the kernel's reach.
-fn on_globe(a: f64, b: f64, apart: f64, sigma: f64) -> f64 {
-    let (a, b) = (a.to_radians(), b.to_radians());
-    let half = |angle: f64| float::square(float::sin(angle / 2.0));
-    let h = half(b - a) + float::cos(a) * float::cos(b) * half(apart.to_radians());
-    let distance = 2.0 * MEAN_RADIUS * float::asin(h.sqrt().min(1.0));
+/// Gaussian of a great-circle distance given by its haversine, per m²; 0 beyond the kernel's reach.
+fn on_globe(haversine: f64, sigma: f64) -> f64 {
+    let distance = 2.0 * MEAN_RADIUS * float::asin(haversine.sqrt().min(1.0));
     if distance > gaussian::REACH * sigma {
         return 0.0;
     }
@@ -271,11 +293,15 @@ mod tests {
     use crate::maths::random::Stream;
     use crate::units::Seed;
 
+    fn haversine(p: (f64, f64), q: (f64, f64)) -> f64 {
+        half(q.1 - p.1) + float::cos(p.1.to_radians()) * float::cos(q.1.to_radians()) * half(q.0 - p.0)
+    }
+
     /// Σ K(d)/e by the double sum as written, d the great circle on a sphere of mean radius.
     fn brute(region: &Region, cells: &[u32], sigma: f64) -> Vec<f64> {
         let kernel = |a: usize, b: usize| {
             let (p, q) = (region.centre(a), region.centre(b));
-            on_globe(p.1, q.1, q.0 - p.0, sigma)
+            on_globe(haversine(p, q), sigma)
         };
         let edge = |c: usize| (0..region.len()).map(|u| kernel(u, c) * region.areas()[u]).sum::<f64>();
         let places: Vec<(usize, f64)> = cells.iter().map(|c| (*c as usize, edge(*c as usize))).collect();
@@ -318,7 +344,7 @@ mod tests {
     fn the_sphere_is_close_to_the_ellipsoid() {
         for (a, b) in [((0.0, 0.0), (0.0, 5.0)), ((0.0, 50.0), (6.0, 50.0)), ((10.0, 79.0), (30.0, 82.0))] {
             let true_length = geodesic(a, b);
-            let k = on_globe(a.1, b.1, b.0 - a.0, 1e6) * (2.0 * std::f64::consts::PI * 1e12);
+            let k = on_globe(haversine(a, b), 1e6) * (2.0 * std::f64::consts::PI * 1e12);
             let length = 1e6 * (-2.0 * float::ln(k)).sqrt();
             assert!((length / true_length - 1.0).abs() < 0.006, "{length} {true_length}");
         }
