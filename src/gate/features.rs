@@ -99,7 +99,8 @@ pub(super) fn read(
     let from = layer.spatial_ref().ok_or_else(|| no_crs(file))?;
     let to = crs::parse(&grid.crs.wkt, "grid")?;
     let transform = crs::transform(&from, &to).ok_or_else(|| no_way(file, &grid.crs.label))?;
-    let mut reader = Reader { file, parts: Vec::new(), polygons: Vec::new(), left: Left::default() };
+    let piece = if from == to { f64::INFINITY } else { piece(&from) };
+    let mut reader = Reader { file, piece, parts: Vec::new(), polygons: Vec::new(), left: Left::default() };
     forget_errors();
     for feature in layer.features() {
         reader.feature(&feature)?;
@@ -114,11 +115,15 @@ pub(super) fn read(
         .into());
     }
     let Reader { parts, polygons, mut left, .. } = reader;
-    let shapes = turned(parts, &transform, &mut left);
+    let mut shapes = turned(parts, &transform, &mut left);
+    if !from.is_geographic() && to.is_geographic() {
+        shapes.iter_mut().for_each(unwrap_longitudes);
+    }
     let covered = if polygons.is_empty() {
         Vec::new()
     } else {
-        let turned: Vec<Geometry> = polygons.iter().filter_map(|p| p.transform(&transform).ok()).collect();
+        let turned: Vec<Geometry> =
+            polygons.iter().filter_map(|p| turned_polygon(p, &from, &to, &transform).ok()).collect();
         burn(grid, &turned, false).map_err(|e| unreadable(file, &e))?
     };
     remark(&place, &left, warnings);
@@ -152,6 +157,9 @@ fn remark(place: &str, left: &Left, warnings: &mut Warnings) {
 /// Walks features down to their points, lines and rings.
 struct Reader<'a> {
     file: &'a str,
+    /// Longest piece of a line, in the layer's own units: lines are straight in the layer's CRS, and
+    /// long ones bend on their way to another.
+    piece: f64,
     parts: Vec<Vec<(f64, f64)>>,
     polygons: Vec<Geometry>,
     left: Left,
@@ -172,7 +180,7 @@ impl Reader<'_> {
             "POINT" | "LINESTRING" | "LINEARRING" => {
                 let mut points = Vec::new();
                 geometry.get_points(&mut points);
-                self.parts.push(points.into_iter().map(|p| (p.0, p.1)).collect());
+                self.parts.push(in_pieces(&points, self.piece));
             }
             "POLYGON" => {
                 self.polygons.push(geometry.clone());
@@ -197,6 +205,49 @@ impl Reader<'_> {
 
     fn inner(&mut self, geometry: &Geometry, fid: Option<u64>) -> Outcome<()> {
         (0..geometry.geometry_count()).try_for_each(|i| self.geometry(&geometry.get_geometry(i), fid))
+    }
+}
+
+/// A length, in units of a CRS, over which a straight line hardly bends in another: about 2 km.
+fn piece(srs: &gdal::spatial_ref::SpatialRef) -> f64 {
+    if srs.is_geographic() { 0.02 } else { 2_000.0 / srs.linear_units() }
+}
+
+/// The vertices of a line, with more between those that lie far apart.
+fn in_pieces(points: &[(f64, f64, f64)], piece: f64) -> Vec<(f64, f64)> {
+    let mut out = Vec::with_capacity(points.len());
+    for pair in points.windows(2) {
+        let (a, b) = (pair[0], pair[1]);
+        let n = ((b.0 - a.0).hypot(b.1 - a.1) / piece).ceil();
+        let n = if n.is_finite() { n.max(1.0) } else { 1.0 };
+        let at = |i: usize| (a.0 + (b.0 - a.0) * i as f64 / n, a.1 + (b.1 - a.1) * i as f64 / n);
+        out.extend((0..n as usize).map(at));
+    }
+    out.extend(points.last().map(|p| (p.0, p.1)));
+    out
+}
+
+/// A polygon in another CRS, its long sides cut into pieces first.
+pub(super) fn turned_polygon(
+    polygon: &Geometry,
+    from: &gdal::spatial_ref::SpatialRef,
+    to: &gdal::spatial_ref::SpatialRef,
+    transform: &gdal::spatial_ref::CoordTransform,
+) -> gdal::errors::Result<Geometry> {
+    let mut copy = polygon.clone();
+    if from != to {
+        // SAFETY: the handle is that of `copy`, which lives on; the call adds vertices to it
+        unsafe { gdal_sys::OGR_G_Segmentize(copy.c_geometry(), piece(from)) };
+    }
+    copy.transform_inplace(transform)?;
+    Ok(copy)
+}
+
+/// Longitudes that follow each other without a leap: a line across 180° goes on past it.
+fn unwrap_longitudes(shape: &mut Shape) {
+    for i in 1..shape.0.len() {
+        let before = shape.0[i - 1].0;
+        shape.0[i].0 -= ((shape.0[i].0 - before) / 360.0).round() * 360.0;
     }
 }
 

@@ -188,7 +188,8 @@ fn polygons(files: &Files, file: &str, definition: &str) -> Outcome<Vec<Geometry
         if geometry.area() <= 0.0 {
             continue;
         }
-        let turned = geometry.transform(&transform).map_err(|e| unreadable(file, &e))?;
+        let turned = super::features::turned_polygon(geometry, &from, &to, &transform);
+        let turned = turned.map_err(|e| unreadable(file, &e))?;
         found.push(turned);
     }
     if found.is_empty() {
@@ -199,19 +200,21 @@ fn polygons(files: &Files, file: &str, definition: &str) -> Outcome<Vec<Geometry
     Ok(found)
 }
 
-/// Which cells polygons (in the grid's CRS) cover.
+/// Which cells polygons (in the grid's CRS) cover, on whatever turn of longitude they are written.
 pub(super) fn burn(grid: &Grid, polygons: &[Geometry], touching: bool) -> gdal::errors::Result<Vec<bool>> {
-    let memory = DriverManager::get_driver_by_name("MEM")?;
-    let mut dataset = memory.create_with_band_type::<u8, _>("", grid.columns, grid.rows, 1)?;
-    dataset.set_geo_transform(&grid.transform)?;
-    let options = RasterizeOptions { all_touched: touching, ..RasterizeOptions::default() };
-    gdal::raster::rasterize(&mut dataset, &[1], polygons, &vec![1.0; polygons.len()], Some(options))?;
-    let size = (grid.columns, grid.rows);
-    Ok(dataset
-        .rasterband(1)?
-        .read_as::<u8>((0, 0), size, size, None)?
-        .data()
-        .iter()
-        .map(|v| *v != 0)
-        .collect())
+    let turns: &[f64] = if grid.crs.kind == CrsKind::Geographic { &[0.0, 360.0, -360.0] } else { &[0.0] };
+    let mut covered = vec![false; grid.len()];
+    for turn in turns {
+        let memory = DriverManager::get_driver_by_name("MEM")?;
+        let mut dataset = memory.create_with_band_type::<u8, _>("", grid.columns, grid.rows, 1)?;
+        let mut transform = grid.transform;
+        transform[0] += turn;
+        dataset.set_geo_transform(&transform)?;
+        let options = RasterizeOptions { all_touched: touching, ..RasterizeOptions::default() };
+        gdal::raster::rasterize(&mut dataset, &[1], polygons, &vec![1.0; polygons.len()], Some(options))?;
+        let size = (grid.columns, grid.rows);
+        let burnt = dataset.rasterband(1)?.read_as::<u8>((0, 0), size, size, None)?;
+        covered.iter_mut().zip(burnt.data()).for_each(|(c, v)| *c |= *v != 0);
+    }
+    Ok(covered)
 }

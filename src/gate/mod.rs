@@ -2,15 +2,18 @@
 //!
 //! The only room that knows GDAL, files and reference systems. It makes no scientific choice.
 
+mod cells;
 mod crs;
 mod digest;
 mod features;
 mod files;
 mod geotiff;
 mod grid_in;
+mod overlay;
 mod points;
 mod reproject;
 mod scale;
+mod share_out;
 mod sources;
 mod staging;
 mod table;

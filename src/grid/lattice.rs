@@ -123,7 +123,7 @@ impl Grid {
     /// Whether the last column is a neighbour of the first.
     pub fn wraps(&self) -> bool {
         self.crs.kind == CrsKind::Geographic
-            && (self.columns as f64 * self.transform[1] - 360.0).abs() < 1e-6 * self.transform[1]
+            && (self.columns as f64 * self.transform[1] - 360.0).abs() < 0.01 * self.transform[1]
     }
 
     /// True area of a cell of this row, m²: in the plane of the projection, or on WGS 84.

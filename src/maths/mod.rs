@@ -7,7 +7,7 @@ pub mod float;
 pub mod gaussian;
 pub mod linear;
 pub mod optimise;
-pub mod poisson;
+pub mod quantile;
 pub mod random;
 pub mod rank;
 pub mod sum;

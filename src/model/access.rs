@@ -30,11 +30,11 @@ pub(super) const MOST: usize = 33;
 /// Cells of the sample on which the search begins.
 const SAMPLE: usize = 20_000;
 /// Starts of the search: how far the first scales are stretched.
-const STARTS: [f64; 3] = [0.3, 1.0, 3.0];
+const STARTS: [f64; 4] = [0.03, 0.3, 1.0, 3.0];
 /// The search is over when a step promises less than this many nats per unit.
-const TOLERANCE: f64 = 1e-11;
+const TOLERANCE: f64 = 1e-10;
 /// Steps after which a search is given up.
-const MOST_STEPS: usize = 200;
+const MOST_STEPS: usize = 500;
 /// Largest base share searched.
 const MOST_BASE: f64 = 0.999;
 
@@ -346,10 +346,10 @@ impl<'a> Model<'a> {
     fn result(&self, found: &Found, context: Context) -> Fitted {
         let mut density = self.surface(&found.at);
         normalise(&mut density, self.training.region().areas());
-        let errors = context.blocks.map(|b| self.standard_errors(&found.at, b));
+        let errors = context.blocks.map(|b| (self.standard_errors(&found.at, b), self.width_of_interval(b)));
         Fitted {
             density,
-            parameters: self.parameters(&found.at, errors.as_deref()),
+            parameters: self.parameters(&found.at, errors.as_ref().map(|(e, w)| (e.as_slice(), *w))),
             evidence: Vec::new(),
             support: None,
             complexity: self.ranges(1.0).iter().flatten().count(),
@@ -357,15 +357,16 @@ impl<'a> Model<'a> {
         }
     }
 
-    fn parameters(&self, at: &[f64], errors: Option<&[Option<f64>]>) -> Vec<Parameter> {
+    fn parameters(&self, at: &[f64], errors: Option<(&[Option<f64>], f64)>) -> Vec<Parameter> {
         let ranges = self.ranges(1.0);
         let mut out = Vec::new();
         let mut k = 0;
         let interval = |k: usize, to: &dyn Fn(f64) -> f64| {
-            let error = errors?[k]?;
+            let (errors, wide) = errors?;
+            let error = errors[k]?;
             let range = ranges[k]?;
             let end = |z: f64| to((at[k] + z * error).clamp(range.low, range.high));
-            Some((end(-1.959_963_985), end(1.959_963_985)))
+            Some((end(-wide), end(wide)))
         };
         for term in &self.terms {
             for name in term.form.parameters().iter().take(term.width()) {

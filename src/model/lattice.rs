@@ -197,10 +197,12 @@ impl Lattice {
         let most = if *wraps { self.columns / 2 } else { self.columns - 1 };
         let rows = half(latitudes[to] - latitudes[from]);
         let ring = cosines[from] * cosines[to];
+        // on a grid wider than half the globe the kernel comes back from the other side
+        let back = halves[..=most].iter().any(|h| *h > halves[most]);
         halves[..=most]
             .iter()
             .map(|half| on_globe(rows + ring * half, sigma))
-            .take_while(|k| *k > 0.0)
+            .take_while(|k| *k > 0.0 || back)
             .map(|k| if power == Power::Two { k * k } else { k })
             .collect()
     }
@@ -337,6 +339,7 @@ mod tests {
         check(60, 20, (20.0, 90.0, 0.5), 120_000.0);
         check(40, 20, (170.0, 5.0, 0.5), 200_000.0);
         check(90, 40, (-180.0, 80.0, 4.0), 500_000.0);
+        check(89, 20, (-178.0, 40.0, 4.0), 1_500_000.0);
     }
 
     /// The sphere's distance is within 0.6 % of the geodesic on the ellipsoid.

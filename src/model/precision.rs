@@ -8,6 +8,7 @@
 //! Liang, K.-Y. & Zeger, S. L. (1986), Biometrika 73, 13–22.
 
 use crate::maths::linear;
+use crate::maths::quantile::student_975;
 use crate::maths::sum::sum;
 use crate::records::Blocks;
 
@@ -47,6 +48,15 @@ impl Model<'_> {
             }
         }
         errors
+    }
+
+    /// How many standard errors the half of a 95 % interval spans: Student's t with one degree of freedom
+    /// less than there are blocks with units, as few blocks tell their own variance badly.
+    pub(super) fn width_of_interval(&self, blocks: &Blocks) -> f64 {
+        let mut filled: Vec<u32> = self.places.iter().map(|(c, _)| blocks.of_cell[*c]).collect();
+        filled.sort_unstable();
+        filled.dedup();
+        student_975(filled.len().max(2) - 1)
     }
 
     /// Fisher information, and by block the sum of scores of its units less what was expected.

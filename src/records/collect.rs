@@ -13,7 +13,8 @@ use super::settings::{Count, RecordsPlan};
 use super::snap::Snapper;
 use super::units::{Records, Unit};
 use super::visits::{
-    Names, Visit, Visits, day_numbers, effective, facts, observer_set, shares, top, top_cell,
+    Names, Visit, Visits, dataset_shares, day_numbers, effective, facts, observer_set, observer_shares, top,
+    top_cell,
 };
 
 /// Turns coordinates of a reference system (by name, or a record's own datum) into the grid's, in
@@ -258,14 +259,17 @@ impl<'a> Collector<'a> {
         if self.ledger.kept() == 0 {
             return Err(self.nothing_left().into());
         }
-        let (visits, renumbered) = self.sorted_visits();
+        let (visits, order) = self.sorted_visits();
+        let mut renumbered = vec![0; order.len()];
+        order.iter().enumerate().for_each(|(rank, &i)| renumbered[i as usize] = rank as u32);
         let mut kept = self.kept.take().unwrap_or_default();
         kept.iter_mut().for_each(|k| k.visit = renumbered[k.visit as usize] + 1);
         kept.sort_unstable_by_key(|k| (k.file, k.line));
-        Ok((self.records(&visits), kept, smell))
+        Ok((self.records(&visits, &order), kept, smell))
     }
 
-    /// The visits in an order that does not depend on the order of rows, and each one's place in it.
+    /// The visits in an order that does not depend on the order of rows, and the number under which
+    /// each was gathered.
     fn sorted_visits(&mut self) -> (Vec<Visit>, Vec<u32>) {
         let (observers, datasets) = (self.observers.order(), self.datasets.order());
         let mut found = std::mem::take(&mut self.visits.found);
@@ -273,14 +277,14 @@ impl<'a> Collector<'a> {
             v.key.1 = observers[v.key.1 as usize];
             v.dataset = datasets[v.dataset as usize];
         });
+        let others = std::mem::take(&mut self.visits.others);
+        self.visits.others = others.into_iter().map(|((v, d), n)| ((v, datasets[d as usize]), n)).collect();
         let mut order: Vec<u32> = (0..found.len() as u32).collect();
         order.sort_unstable_by_key(|&i| found[i as usize].key);
-        let mut renumbered = vec![0; found.len()];
-        order.iter().enumerate().for_each(|(rank, &i)| renumbered[i as usize] = rank as u32);
-        (order.iter().map(|&i| found[i as usize]).collect(), renumbered)
+        (order.iter().map(|&i| found[i as usize]).collect(), order)
     }
 
-    fn records(self, visits: &[Visit]) -> Records {
+    fn records(self, visits: &[Visit], numbers: &[u32]) -> Records {
         let mut outings = BTreeMap::new();
         for v in visits {
             let next = outings.len() as u32;
@@ -302,9 +306,10 @@ impl<'a> Collector<'a> {
         }
         let places = visits.chunk_by(|a, b| a.key.0 == b.key.0).count();
         let known = |pick: fn(&Visit) -> u32| visits.iter().any(|v| pick(v) > 0);
-        let shares = |pick: fn(&Visit) -> u32| shares(visits, pick, self.plan.count);
-        let (by_observer, by_dataset) = (shares(|v| v.key.1), shares(|v| v.dataset));
-        let (observer, dataset) = (known(|v| v.key.1), known(|v| v.dataset));
+        let by_observer = observer_shares(visits, self.plan.count);
+        let by_dataset = dataset_shares(visits, numbers, &self.visits.others, self.plan.count);
+        let (observer, dataset) =
+            (known(|v| v.key.1), known(|v| v.dataset) || !self.visits.others.is_empty());
         Records {
             count: self.plan.count,
             outings: self.plan.count != Count::Places

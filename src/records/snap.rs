@@ -10,10 +10,9 @@ use crate::units::Metres;
 pub struct Snapper {
     tree: KdTree<f64, u32, Vec<f64>>,
     reach: f64,
+    /// Squared distance between coordinates within which the centre of a cell in reach must lie.
+    around: f64,
 }
-
-/// How many nearest centres are looked at for the nearest cell.
-const CANDIDATES: usize = 6;
 
 impl Snapper {
     /// Indexes the cells at the region's rim.
@@ -27,7 +26,12 @@ impl Snapper {
             let (x, y) = region.centre(cell);
             tree.add(point(region, x, y), cell as u32).expect("centres are finite");
         }
-        Self { tree, reach: reach.get() }
+        let widest = (0..region.grid().rows)
+            .map(|r| region.grid().cell_sides(r))
+            .fold(0.0, |m: f64, (w, h)| m.max(w.hypot(h)));
+        let unit = region.grid().metres_per_unit();
+        let around = (reach.get() + widest) / unit * 1.01;
+        Self { tree, reach: reach.get(), around: around * around }
     }
 
     /// The nearest inside cell, when it is within reach of the place (to its edge, not its centre).
@@ -35,7 +39,7 @@ impl Snapper {
         if !x.is_finite() || !y.is_finite() {
             return None;
         }
-        let near = self.tree.nearest(&point(region, x, y), CANDIDATES, &squared_euclidean).ok()?;
+        let near = self.tree.within(&point(region, x, y), self.around, &squared_euclidean).ok()?;
         near.iter()
             .map(|(_, cell)| (to_cell(region, **cell as usize, x, y), **cell as usize))
             .min_by(|a, b| a.0.total_cmp(&b.0).then(a.1.cmp(&b.1)))

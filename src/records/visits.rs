@@ -47,6 +47,8 @@ impl Names {
 pub(super) struct Visits {
     numbers: std::collections::HashMap<VisitKey, u32>,
     pub(super) found: Vec<Visit>,
+    /// Records of a visit that belong to another data set than its first, by visit and data set.
+    pub(super) others: BTreeMap<(u32, u32), u32>,
 }
 
 #[derive(Clone, Copy)]
@@ -70,7 +72,9 @@ impl Visits {
         visit.records += 1;
         visit.offset[0] += offset[0];
         visit.offset[1] += offset[1];
-        visit.dataset = visit.dataset.min(dataset);
+        if visit.dataset != dataset {
+            *self.others.entry((n, dataset)).or_insert(0) += 1;
+        }
         visit.uncertainty = visit.uncertainty.min(uncertainty); // a number beats not-a-number
         n
     }
@@ -92,14 +96,42 @@ pub(super) fn day_numbers(range: DateRange) -> (i32, i32) {
     (number(range.first), number(range.last))
 }
 
-/// Share of the units by observer or data set.
-pub(super) fn shares(visits: &[Visit], pick: fn(&Visit) -> u32, count: Count) -> Vec<f64> {
-    let mut by: BTreeMap<u32, f64> = BTreeMap::new();
-    for v in visits {
-        *by.entry(pick(v)).or_insert(0.0) += if count == Count::Records { f64::from(v.records) } else { 1.0 };
-    }
+/// What a visit weighs.
+fn weight(visit: &Visit, count: Count) -> f64 {
+    if count == Count::Records { f64::from(visit.records) } else { 1.0 }
+}
+
+fn as_shares(by: &BTreeMap<u32, f64>) -> Vec<f64> {
     let total: f64 = by.values().sum();
     by.values().map(|v| v / total).collect()
+}
+
+/// Share of the units by observer.
+pub(super) fn observer_shares(visits: &[Visit], count: Count) -> Vec<f64> {
+    let mut by: BTreeMap<u32, f64> = BTreeMap::new();
+    visits.iter().for_each(|v| *by.entry(v.key.1).or_insert(0.0) += weight(v, count));
+    as_shares(&by)
+}
+
+/// Share of the units by data set; a visit with records of several is divided among them. `numbers`
+/// gives the number under which each visit was gathered.
+pub(super) fn dataset_shares(
+    visits: &[Visit],
+    numbers: &[u32],
+    others: &BTreeMap<(u32, u32), u32>,
+    count: Count,
+) -> Vec<f64> {
+    let mut by: BTreeMap<u32, f64> = BTreeMap::new();
+    for (visit, number) in visits.iter().zip(numbers) {
+        let part = weight(visit, count) / f64::from(visit.records);
+        let mut first = visit.records;
+        for ((_, dataset), records) in others.range((*number, 0)..=(*number, u32::MAX)) {
+            *by.entry(*dataset).or_insert(0.0) += part * f64::from(*records);
+            first -= records;
+        }
+        *by.entry(visit.dataset).or_insert(0.0) += part * f64::from(first);
+    }
+    as_shares(&by)
 }
 
 /// Inverse Simpson number.

@@ -3,7 +3,7 @@
 
 use minijinja::{Value, context};
 
-use crate::maths::{float, poisson};
+use crate::maths::{float, quantile};
 use crate::model::{CandidateKind, CurveForm, Evidence, OddsBin, Parameter};
 use crate::output::finding::{CandidateFinding, Finding};
 use crate::proxies::{Layer, Measure};
@@ -233,7 +233,7 @@ fn across(classes: &[OddsBin], unit: f64) -> Axis {
 fn observed(total: f64, class: &OddsBin, whole: f64, axis: &Axis) -> Observed {
     let ratio = class.ratio(total);
     let expected = total * class.area_share;
-    let (low, high) = poisson::interval_95(class.units);
+    let (low, high) = quantile::interval_95(class.units);
     let interval = (low / expected, high / expected);
     let at = axis.at(f64::midpoint(axis.along(class.from), axis.along(class.to)));
     Observed { class: (class.from, class.to), at, ratio, interval, whole }
