@@ -30,7 +30,17 @@ impl Slope {
     /// The slope for a mean logarithm over held-out units; `None` when the surface is flat or no
     /// finite slope fits.
     pub fn solve(&self, mean: f64) -> Option<f64> {
-        let mut slope = 1.0_f64;
+        if self.logs.len() <= BINS {
+            return self.newton(mean, 1.0);
+        }
+        // the bins bring the search so near that one or two looks at all cells are enough
+        let near = self.compressed().newton(mean, 1.0)?;
+        self.newton(mean, near)
+    }
+
+    /// Newton's method from a first slope.
+    fn newton(&self, mean: f64, from: f64) -> Option<f64> {
+        let mut slope = from;
         let (low, high) = (self.logs.iter().copied().fold(f64::MAX, f64::min), self.highest());
         if !(mean > low && mean < high) {
             return None;
@@ -48,11 +58,16 @@ impl Slope {
             let variance = second / mass - centre * centre;
             let step = ((mean - centre) / variance.max(1e-12)).clamp(-1.0, 1.0);
             slope += step;
-            if step.abs() < 1e-12 * slope.abs().max(1.0) {
+            if step.abs() < 1e-10 * slope.abs().max(1.0) {
                 return Some(slope);
             }
         }
         None
+    }
+
+    /// The logarithms and areas it was made of.
+    pub(super) fn into_parts(self) -> (Vec<f64>, Vec<f64>) {
+        (self.logs, self.weights)
     }
 
     fn highest(&self) -> f64 {

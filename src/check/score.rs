@@ -84,7 +84,7 @@ pub fn score(surfaces: &[Vec<f64>], held: &[HeldOut], region: &Region, blocks: &
             expected.iter_mut().zip(by_area).for_each(|(e, a)| *e += share * a);
         }
     }
-    let slope = pooled_slope(surfaces, held, region);
+    let (folds, slope) = pooled_slope(folds);
     let by_block = ByBlock::new(&units, blocks, windows);
     let mean_log = by_block.log.iter().sum::<f64>() / total;
     let observed: Vec<f64> = (0..WINDOWS).map(|w| by_block.windows.iter().map(|b| b[w]).sum()).collect();
@@ -117,15 +117,14 @@ fn background(surface: &[f64], held: &HeldOut, region: &Region) -> (Vec<f64>, Ve
     (0..surface.len()).filter(|c| held.holds(*c)).map(|c| (float::ln(surface[c]), region.areas()[c])).unzip()
 }
 
-/// The background of all folds together.
-fn pooled_slope(surfaces: &[Vec<f64>], held: &[HeldOut], region: &Region) -> Slope {
+/// The backgrounds of all folds together.
+fn pooled_slope(mut folds: Vec<OneFold>) -> (Vec<OneFold>, Slope) {
     let (mut logs, mut weights) = (Vec::new(), Vec::new());
-    for (surface, held) in surfaces.iter().zip(held) {
-        let (mut l, mut w) = background(surface, held, region);
-        logs.append(&mut l);
-        weights.append(&mut w);
+    for fold in &mut folds {
+        logs.append(&mut fold.background.0);
+        weights.append(&mut fold.background.1);
     }
-    Slope::new(logs, weights)
+    (folds, Slope::new(logs, weights))
 }
 
 struct OneFold {
@@ -133,6 +132,8 @@ struct OneFold {
     weight: f64,
     scores: Scores,
     units: Vec<UnitScore>,
+    /// Logarithms of the surface and areas, for calibration.
+    background: (Vec<f64>, Vec<f64>),
 }
 
 impl OneFold {
@@ -155,14 +156,17 @@ impl OneFold {
             let observed = w.fill(units.iter().map(|u| (u.density, u.what.weight)));
             Windows::index(&observed, &w.expected(surface, region.areas()))
         });
-        let (logs, areas) = background(surface, held, region);
+        let slope = {
+            let (logs, areas) = background(surface, held, region);
+            Slope::new(logs, areas)
+        };
         let scores = Scores {
             log_score: Some(mean(|u| u.log_density)),
             auc: Some(mean(|u| u.placement)),
             boyce,
-            calibration_slope: Slope::new(logs, areas).solve(mean(|u| u.log_density)),
+            calibration_slope: slope.solve(mean(|u| u.log_density)),
         };
-        Self { fold, weight, scores, units }
+        Self { fold, weight, scores, units, background: slope.into_parts() }
     }
 }
 
