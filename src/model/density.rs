@@ -11,11 +11,10 @@
 use std::collections::BTreeMap;
 
 use crate::diag::{Diagnostic, Outcome};
-use crate::grid::Metric;
 use crate::maths::float;
 use crate::maths::optimise::{End, Search, maximise};
 use crate::maths::sum::sum;
-use crate::records::{Training, Unit};
+use crate::records::Training;
 use crate::units::Metres;
 
 use super::fitted::{Context, Evidence, Fitted, Parameter, normalise};
@@ -122,10 +121,9 @@ fn curve(found: &Search) -> Evidence {
 fn surface(training: &Training, bandwidth: f64) -> (Vec<f64>, Vec<f64>) {
     let lattice = Lattice::new(training, 1);
     let (spots, weights) = binned(training, &lattice);
-    let narrowed = narrowed(training, bandwidth);
-    let edges = lattice.edges(narrowed, &spots);
+    let edges = lattice.edges(bandwidth, &spots);
     let scaled: Vec<f64> = weights.iter().zip(&edges).map(|(w, e)| w / e).collect();
-    let field = lattice.spread(narrowed, &spots, &scaled, Power::One);
+    let field = lattice.spread(bandwidth, &spots, &scaled, Power::One);
     let region = training.region();
     let mut density: Vec<f64> = (0..region.len()).map(|c| field[lattice.spot(training, c)]).collect();
     normalise(&mut density, region.areas());
@@ -147,21 +145,6 @@ fn binned(training: &Training, lattice: &Lattice) -> (Vec<Spot>, Vec<f64>) {
         }
     }
     bins.into_iter().unzip()
-}
-
-/// The bandwidth less what sharing out adds to it: a unit at a part d from a centre, shared between two
-/// centres a cell apart, has a variance of d(1 − d) cells² of its own, so that a kernel of the square
-/// root of bandwidth² − mean d(1 − d) gives the spread asked for.
-fn narrowed(training: &Training, bandwidth: f64) -> f64 {
-    let added = |part: f32| f64::from(part.abs() * (1.0 - part.abs()));
-    let of_unit = |u: &Unit| u.weight * (added(u.offset[0]) + added(u.offset[1])) / 2.0;
-    let mean = sum(training.units().iter().map(of_unit)) / training.weight();
-    let grid = training.region().grid();
-    let side = grid.cell_side().get();
-    if grid.metric() == Metric::Geodesic && bandwidth < 2.0 * side {
-        return bandwidth; // on the globe the kernel is sampled at centres, which a narrow one does not bear
-    }
-    (bandwidth * bandwidth - mean * side * side).max(bandwidth * bandwidth / 4.0).sqrt()
 }
 
 /// Effective number of distinct places that carry the weight of every cell.
