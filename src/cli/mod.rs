@@ -57,12 +57,13 @@ fn run(arguments: &Arguments, voice: Voice) -> trodden::diag::Outcome<()> {
 
 /// An interruption clears unfinished outputs and ends with its own code; a file grown beyond the
 /// shell's limit is an error of writing, not a death.
-#[allow(clippy::disallowed_methods, reason = "the handler's last act")]
 fn survive_signals() {
     // SAFETY: ignoring a signal touches no memory
     unsafe { libc::signal(libc::SIGXFSZ, libc::SIG_IGN) };
     drop(ctrlc::set_handler(|| {
         trodden::gate::clear_staging();
-        std::process::exit(INTERRUPTED);
+        // SAFETY: ends the process at once; the destructors of C++ libraries must not run while another
+        // thread is still at work in them
+        unsafe { libc::_exit(INTERRUPTED) };
     }));
 }

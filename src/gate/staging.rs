@@ -23,7 +23,12 @@ pub fn clear_all() {
 
 /// Removes a hidden folder, and those made for it that hold nothing else.
 fn clear(hidden: &Path, made: &[PathBuf]) {
-    drop(fs::remove_dir_all(hidden));
+    // another thread may still be putting files there
+    for _ in 0..50 {
+        if fs::remove_dir_all(hidden).is_ok() || !hidden.exists() {
+            break;
+        }
+    }
     made.iter().for_each(|folder| drop(fs::remove_dir(folder)));
 }
 
