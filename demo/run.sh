@@ -70,7 +70,7 @@ tell() {
     chosen=$(tr -d '\n' <demo/out/effort.json | sed -n 's/.*"surface": *{ *"candidate": *"\([^"]*\)".*/\1/p')
     printf '\n'
     printf '%s of %s records were kept: %s visits to %s places (every dropped row: demo/out/dropped.csv).\n' \
-        "$(number kept)" "$(number read)" "$(number units)" "$(number places)"
+        "$(number kept)" "$(number read)" "$(rounded "$(number units)" '%.0f')" "$(number places)"
     printf 'Best on held-out visits: "%s", %s nats a visit better than no pattern (demo/out/compare/comparison.html).\n' \
         "${chosen:-?}" "$(rounded "$(best_of '"log_score":{"value":')" '%.2f')"
     printf 'Its surface: demo/out/effort.tif; effort worth %s of %s cells, on the grid of temperature.tif.\n' \

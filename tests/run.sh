@@ -20,6 +20,14 @@ cargo fmt --check
 cargo clippy --quiet --locked --all-targets -- -D warnings
 bash -n demo/run.sh
 cargo build --quiet --locked --release --bins --examples
-cargo test --locked --no-fail-fast
+log=$(mktemp)
+trap 'rm -f "$log"' EXIT
+outcome=0
+cargo test --locked --no-fail-fast 2>&1 | tee "$log" || outcome=$?
+count() { sed -n "s/^test result:.* \([0-9]*\) $1;.*/\1/p" "$log" | awk '{ n += $1 } END { print n + 0 }'; }
+if [ "$outcome" -ne 0 ]; then
+  echo "$(count passed) passed, $(count failed) failed"
+  exit "$outcome"
+fi
 RUSTDOCFLAGS="-D warnings" cargo doc --quiet --locked --no-deps
-echo "all checks passed"
+echo "$(count passed) passed, $(count failed) failed"

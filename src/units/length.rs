@@ -36,6 +36,12 @@ impl Length {
 
     /// Reads `"250 m"`, `"1.5 km"`, `"2 cells"`, `"0.01 deg"`.
     ///
+    /// ```
+    /// use trodden::units::Length;
+    /// assert_eq!(Length::parse("1.5 km"), Length::parse("1500 m"));
+    /// assert!(Length::parse("1500").unwrap_err().contains("has no unit"));
+    /// ```
+    ///
     /// # Errors
     /// The words to show when the text is no such length.
     pub fn parse(text: &str) -> Result<Self, String> {
