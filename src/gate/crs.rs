@@ -52,7 +52,7 @@ pub(super) fn turn(transform: &CoordTransform, x: &mut [f64], y: &mut [f64]) {
 }
 
 /// The CRS a datum's usual name stands for; `None` when it is not known.
-pub fn transformer_label(datum: &str) -> Option<&'static str> {
+pub(super) fn of_datum(datum: &str) -> Option<&'static str> {
     let folded: String =
         datum.chars().filter(char::is_ascii_alphanumeric).map(|c| c.to_ascii_lowercase()).collect();
     Some(match folded.as_str() {

@@ -15,6 +15,7 @@ use crate::proxies::{LayerPlan, Measure};
 use crate::records::{RecordsPlan, Row};
 
 use super::digest::{InputFile, digest};
+use super::remote::remote_source;
 use super::scale::Wander;
 use super::sources::{GridRequest, LayerData, Peek, Sources};
 use super::{crs, features, grid_in, points, scale, table, values};
@@ -32,6 +33,8 @@ fn settle_gdal() {
         drop(gdal::config::set_config_option("GDAL_SKIP", NETWORK_DRIVERS));
         drop(gdal::config::set_config_option("OGR_INTERLEAVED_READING", "YES"));
         drop(gdal::config::set_config_option("GDAL_PAM_ENABLED", "NO"));
+        // whatever still names a web address, deep inside a file, is not asked for
+        drop(gdal::config::set_config_option("CPL_VSIL_CURL_ALLOWED_EXTENSIONS", ".never"));
         gdal::config::set_error_handler(|_, _, _| {});
         // SAFETY: takes a number, touches no memory of ours
         unsafe { gdal_sys::OSRSetPROJEnableNetwork(0) };
@@ -137,26 +140,8 @@ fn no_network(path: &Path, file: &str) -> Outcome<()> {
     if !virtual_file {
         return Ok(());
     }
-    let text = std::fs::read_to_string(path).unwrap_or_default().to_lowercase();
-    let remote = [
-        "/vsicurl",
-        "/vsis3",
-        "/vsigs",
-        "/vsiaz",
-        "/vsiadls",
-        "/vsioss",
-        "/vsiswift",
-        "/vsihdfs",
-        "/vsiwebhdfs",
-        "http:",
-        "https:",
-        "ftp:",
-        "pg:",
-        "postgresql:",
-        "mysql:",
-        "<gdal_wms",
-    ];
-    match remote.iter().find(|r| text.contains(**r)) {
+    let text = std::fs::read_to_string(path).unwrap_or_default();
+    match remote_source(&text) {
         None => Ok(()),
         Some(found) => {
             Err(Diagnostic::input("remote_path", file, format!("refers to a network (`{found}`)"))
@@ -227,7 +212,7 @@ impl Sources for Files {
         {
             return if datum.is_empty() { plan } else { datum };
         }
-        if let Some(known) = crs::transformer_label(datum) {
+        if let Some(known) = crs::of_datum(datum) {
             return known;
         }
         let code = datum.to_ascii_uppercase().replace(' ', "");

@@ -3,7 +3,6 @@
 //! Pure: takes text and gives values; opens no file, so that a file that is missing shows later.
 
 mod study;
-mod remote;
 mod log;
 mod syntax;
 mod keys;
@@ -22,8 +21,8 @@ mod resolved;
 mod reference;
 mod read;
 
+pub use crate::gate::is_remote;
 pub use read::read;
 pub use reference::reference;
-pub use remote::is_remote;
 pub use resolved::resolved;
 pub use study::{GridPlan, StudyPlan};

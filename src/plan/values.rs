@@ -5,8 +5,8 @@ use toml::de::{DeArray, DeValue};
 use super::keys::{Bounds, Choice, Key, Kind, Lengths, listed, nearest};
 use super::log::Log;
 use super::measures;
-use super::remote::is_remote;
 use super::table::{Item, entries};
+use crate::gate::is_remote;
 use crate::records::DateRange;
 use crate::units::Share;
 

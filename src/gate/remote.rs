@@ -73,6 +73,17 @@ pub fn is_remote(path: &str) -> bool {
         || names_scheme(path)
 }
 
+/// The first source of a virtual raster or vector (XML) that lies on a network.
+pub(super) fn remote_source(xml: &str) -> Option<&str> {
+    xml.split('<').find_map(|element| {
+        let (tag, text) = element.split_once('>')?;
+        let name = tag.split_whitespace().next().unwrap_or_default().to_lowercase();
+        let source = ["source", "filename", "dataset"].iter().any(|word| name.contains(word));
+        let inline = is_remote(&format!("<{name}"));
+        (inline || source && is_remote(text)).then(|| if inline { tag } else { text.trim() })
+    })
+}
+
 fn names_folder(path: &str, folder: &str) -> bool {
     path.match_indices(folder).any(|(at, _)| {
         let rest = &path[at + folder.len()..];
@@ -90,7 +101,7 @@ fn names_scheme(path: &str) -> bool {
 
 #[cfg(test)]
 mod tests {
-    use super::is_remote;
+    use super::{is_remote, remote_source};
 
     #[test]
     fn refuses_what_needs_a_network() {
@@ -148,5 +159,20 @@ mod tests {
         ] {
             assert!(!is_remote(path), "{path}");
         }
+    }
+
+    #[test]
+    fn sources_inside_a_virtual_file() {
+        let inside = |what: &str| {
+            format!(
+                "<VRTDataset><!-- see http://a.example --><SourceFilename relativeToVRT=\"0\">{what}</SourceFilename></VRTDataset>"
+            )
+        };
+        assert_eq!(
+            remote_source(&inside("/vsicurl/http://a.example/x.tif")),
+            Some("/vsicurl/http://a.example/x.tif")
+        );
+        assert_eq!(remote_source(&inside("photo.jpg")), None);
+        assert!(remote_source("<GDAL_WMS><Service name=\"TMS\"/></GDAL_WMS>").is_some());
     }
 }
