@@ -113,8 +113,12 @@ fn range<'a>(values: impl Iterator<Item = &'a f64>) -> (f64, f64) {
 }
 
 /// Cells and areas of a fold's background for calibration: its own cells where blocks are held out.
+/// A cell without weight has no logarithm, and no unit is expected there at any slope.
 fn background(surface: &[f64], held: &HeldOut, region: &Region) -> (Vec<f64>, Vec<f64>) {
-    (0..surface.len()).filter(|c| held.holds(*c)).map(|c| (float::ln(surface[c]), region.areas()[c])).unzip()
+    (0..surface.len())
+        .filter(|c| held.holds(*c) && surface[*c] > 0.0)
+        .map(|c| (float::ln(surface[c]), region.areas()[c]))
+        .unzip()
 }
 
 /// The backgrounds of all folds together.

@@ -12,7 +12,7 @@ use trodden::output::{
 };
 use trodden::plan::{GridPlan, StudyPlan, read, resolved};
 use trodden::records::{Rule, Sink};
-use trodden::study::{Needs, Notes, Options, gather, run};
+use trodden::study::{Needs, Notes, gather, run};
 use trodden::units::{Bytes, Length};
 
 use super::args::{BuildArgs, CheckArgs, Common, CompareArgs};
@@ -207,7 +207,7 @@ fn study(
     target: &Path,
     common: &Common,
     voice: Voice,
-    wish: Wish,
+    kept: bool,
 ) -> Outcome<(Finding, Run)> {
     let time = now();
     own_inputs(opened, target)?;
@@ -215,10 +215,9 @@ fn study(
     let mut staging = Staging::open(target)?;
     let mut dropped = DroppedTable::create(&mut staging, &opened.plan.records.files)?;
     let bars = Bars::new(voice.shows_progress());
-    let needs = Needs { sources: &files, observer: &bars, memory: memory(common), kept: wish.kept };
+    let needs = Needs { sources: &files, observer: &bars, memory: memory(common), kept };
     let mut notes = Notes::default();
-    let options = Options { candidate: wish.candidate, tool: tool() };
-    let outcome = run(&opened.plan, &needs, options, &mut dropped, &mut notes);
+    let outcome = run(&opened.plan, &needs, tool(), &mut dropped, &mut notes);
     bars_end(&bars);
     if outcome.is_err() {
         warn(&notes.warnings, voice);
@@ -242,11 +241,17 @@ fn study(
     Ok((finding, Run { staging, plan, inputs, stages: notes.stages, time }))
 }
 
-/// What a command wants of a run.
-#[derive(Clone, Copy)]
-struct Wish<'a> {
-    candidate: Option<&'a str>,
-    kept: bool,
+/// Delivers a candidate other than the plan's choice.
+fn choose(plan: &mut StudyPlan, name: &str) -> Outcome<()> {
+    if !plan.candidates.iter().any(|c| c.name == name) {
+        let names: Vec<String> = plan.candidates.iter().map(|c| format!("`{}`", c.name)).collect();
+        let text = format!("the plan has no candidate `{name}`");
+        return Err(Diagnostic::plan("unknown_candidate", "--candidate", text)
+            .cure(format!("name one of {}", names.join(", ")))
+            .into());
+    }
+    plan.surface.candidate = trodden::output::Choice::Named(name.to_owned());
+    Ok(())
 }
 
 fn file_name(path: &str) -> String {
@@ -266,12 +271,11 @@ fn target(wanted: Option<&PathBuf>, opened: &Opened) -> PathBuf {
 pub fn build(args: &BuildArgs, common: &Common, voice: Voice) -> Outcome<()> {
     let mut opened = open(&args.plan)?;
     if let Some(name) = &args.candidate {
-        opened.plan.surface.candidate = trodden::output::Choice::Named(name.clone());
+        choose(&mut opened.plan, name)?;
     }
     let target = target(args.output.as_ref(), &opened);
     let output = &opened.plan.output;
-    let wish = Wish { candidate: args.candidate.as_deref(), kept: output.details };
-    let (finding, mut run) = study(&opened, &target, common, voice, wish)?;
+    let (finding, mut run) = study(&opened, &target, common, voice, output.details)?;
     let finished = finish(&finding.chosen().fitted.density, &finding.region, &finding.surface);
     run.stage("write", |run| {
         surface(run, "effort.tif", &finding, finding.chosen(), (&finished, output.compress))?;
@@ -303,7 +307,7 @@ pub fn compare(args: &CompareArgs, common: &Common, voice: Voice) -> Outcome<()>
     let opened = open(&args.plan)?;
     let target = target(args.output.as_ref(), &opened);
     let output = &opened.plan.output;
-    let (finding, mut run) = study(&opened, &target, common, voice, Wish { candidate: None, kept: false })?;
+    let (finding, mut run) = study(&opened, &target, common, voice, false)?;
     run.stage("write", |run| {
         for candidate in &finding.candidates {
             let finished = finish(&candidate.fitted.density, &finding.region, &finding.surface);

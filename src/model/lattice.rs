@@ -58,6 +58,11 @@ impl Lattice {
         Self { step, columns, grid_columns: grid.columns, form: form(grid, step, rows), mass }
     }
 
+    /// Nothing on every spot.
+    pub(super) fn blank(&self) -> Array2<f64> {
+        Array2::zeros(self.mass.dim())
+    }
+
     /// Where a cell of the region lies.
     pub(super) fn spot(&self, training: &Training, cell: usize) -> Spot {
         let flat = training.region().flat(cell);

@@ -81,15 +81,13 @@ impl Windows {
         let lattice = &groups.lattice;
         let taps = lattice.taps(bandwidth);
         let peak = lattice.kernel(&taps, groups.spots[0], groups.spots[0]);
-        let mut shares: std::collections::BTreeMap<Spot, f64> = std::collections::BTreeMap::new();
+        let mut masses = lattice.blank();
         for (cell, d) in density.iter().enumerate() {
-            let mass = d * training.exposure(cell);
-            if mass > 0.0 {
-                *shares.entry(lattice.spot(training, cell)).or_insert(0.0) += mass;
-            }
+            masses[lattice.spot(training, cell)] += d * training.exposure(cell);
         }
-        let all = sum(shares.values().copied());
-        let shares: Vec<(Spot, f64)> = shares.into_iter().map(|(s, m)| (s, m / all)).collect();
+        let all = sum(masses.iter().copied());
+        let held = masses.indexed_iter().filter(|(_, m)| **m > 0.0);
+        let shares: Vec<(Spot, f64)> = held.map(|(s, m)| (s, m / all)).collect();
         let total = sum(groups.weights.iter().copied());
         let (spots, masses): (Vec<Spot>, Vec<f64>) = shares.iter().map(|(s, m)| (*s, m * total)).unzip();
         let window = |spots: &[Spot], weights: &[f64]| {

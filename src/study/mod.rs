@@ -8,4 +8,4 @@ mod route;
 
 pub use cost::{Cost, estimate};
 pub use gather::{Gathered, Needs, Notes, gather};
-pub use route::{Options, ready, run};
+pub use route::{ready, run};

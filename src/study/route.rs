@@ -21,14 +21,6 @@ const BLOCK_PART: f64 = 0.1;
 /// Classes of a layer in its curve of observed to available.
 const CLASSES: usize = 20;
 
-/// What the caller wants beside the plan.
-pub struct Options<'a> {
-    /// Deliver this candidate whatever the plan says.
-    pub candidate: Option<&'a str>,
-    /// The program.
-    pub tool: Tool,
-}
-
 /// Runs a study.
 ///
 /// # Errors
@@ -36,7 +28,7 @@ pub struct Options<'a> {
 pub fn run(
     plan: &StudyPlan,
     needs: &Needs,
-    options: Options,
+    tool: Tool,
     sink: &mut dyn Sink,
     notes: &mut Notes,
 ) -> Outcome<Finding> {
@@ -54,12 +46,10 @@ pub fn run(
         let scores: Vec<&CandidateScores> = candidates.iter().map(|c| &c.scores).collect();
         judge(&scores, &complexity, plan.holdout.resamples, plan.seed)
     });
-    let wanted =
-        options.candidate.map_or_else(|| plan.surface.candidate.clone(), |n| Choice::Named(n.to_owned()));
-    let delivered = match wanted {
+    let delivered = match &plan.surface.candidate {
         Choice::Best => verdict.chosen,
         Choice::Named(name) => {
-            candidates.iter().position(|c| c.name == name).ok_or_else(|| no_candidate(&name, plan))?
+            candidates.iter().position(|c| c.name == *name).expect("the plan names only candidates it holds")
         }
     };
     let mut warnings = std::mem::take(&mut notes.warnings);
@@ -67,7 +57,7 @@ pub fn run(
     Ok(Finding {
         title: plan.title.clone(),
         seed: plan.seed,
-        tool: options.tool,
+        tool,
         region,
         records,
         kept,
@@ -182,12 +172,6 @@ fn no_weight(name: &str, scores: &CandidateScores) -> Option<Diagnostic> {
             "its log score is minus infinity: set `floor` in [surface] above 0, or use a wider bandwidth",
         )
     })
-}
-
-fn no_candidate(name: &str, plan: &StudyPlan) -> Diagnostic {
-    let names: Vec<String> = plan.candidates.iter().map(|c| format!("`{}`", c.name)).collect();
-    Diagnostic::plan("unknown_candidate", "--candidate", format!("the plan has no candidate `{name}`"))
-        .cure(format!("name one of {}", names.join(", ")))
 }
 
 /// Warns of weight that rests on fewer distinct places than the plan wants.

@@ -1,6 +1,6 @@
 //! Plans that are wrong: the line is quoted, the fault marked, the cure named.
 
-use super::common::World;
+use super::common::{World, says};
 use super::refused;
 
 /// A plan with one passage exchanged is refused, with its line quoted and marked.
@@ -136,4 +136,13 @@ fn all_that_is_wrong_is_said_at_once() {
     let world = World::new();
     world.change(&[("seed = 7", "sede = 7"), ("folds = 3", "folds = 1"), ("\"400 m\"", "400")]);
     refused(&world, 2, &["sede", "folds", "400"]);
+}
+
+/// A name that is none is refused before any work, not after all of it.
+#[test]
+fn a_candidate_on_the_command_line_that_is_none() {
+    let world = World::new();
+    let said = world.run(&["build", "plan.toml", "--candidate", "nobody"]).ended(2);
+    says(&said.stderr, &["nobody", "name one of", "uniform"]);
+    assert!(!world.path("out").exists());
 }
