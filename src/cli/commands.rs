@@ -11,7 +11,7 @@ use trodden::output::{
     finish, held_out_csv,
 };
 use trodden::plan::{GridPlan, StudyPlan, read, resolved};
-use trodden::records::{Rule, Sink};
+use trodden::records::{Detail, Rule, Sink};
 use trodden::study::{Needs, Notes, gather, run};
 use trodden::units::{Bytes, Length};
 
@@ -64,7 +64,7 @@ fn tool() -> Tool {
 struct Nowhere;
 
 impl Sink for Nowhere {
-    fn dropped(&mut self, _: usize, _: u64, _: Rule, _: &str) -> Outcome<()> {
+    fn dropped(&mut self, _: usize, _: u64, _: Rule, _: &Detail) -> Outcome<()> {
         Ok(())
     }
 }
@@ -122,7 +122,7 @@ fn looks(plan: &StudyPlan, files: &Files, rows: Option<u64>) -> Vec<CheckedInput
         GridPlan::Like(file) | GridPlan::Region { region: file, .. } => (file.as_str(), None),
     };
     let layers = plan.layers.iter().map(|l| (l.file.as_str(), l.table.as_deref()));
-    let records = plan.records.files.iter().map(|f| (f.as_str(), plan.records.table.as_deref()));
+    let records = plan.records.files().map(|(f, s)| (f, s.table.as_deref()));
     let mut all: Vec<(&str, Option<&str>)> = Vec::new();
     for one in std::iter::once(grid).chain(layers).chain(records) {
         if !all.contains(&one) {
@@ -132,16 +132,21 @@ fn looks(plan: &StudyPlan, files: &Files, rows: Option<u64>) -> Vec<CheckedInput
     let look = |(file, table): (&str, Option<&str>)| {
         let p = Sources::peek(files, file, table).ok()?;
         let text = p.kind == "text";
-        let single = plan.records.files.len() == 1;
+        let single = plan.records.files().count() == 1;
         Some(CheckedInput {
             file: table.map_or_else(|| p.file.clone(), |t| format!("{}, {t}", p.file)),
             kind: p.kind,
-            crs: if text { plan.records.crs.clone() } else { p.crs },
+            crs: if text { text_crs(plan, file) } else { p.crs },
             extent: p.extent,
             count: if text && single { rows } else { p.count },
         })
     };
     all.into_iter().filter_map(look).collect()
+}
+
+/// The CRS that the plan gives the columns of a text.
+fn text_crs(plan: &StudyPlan, file: &str) -> String {
+    plan.records.files().find(|(f, _)| *f == file).map_or_else(String::new, |(_, s)| s.crs.clone())
 }
 
 /// Refuses a run whose outputs would replace its own inputs.
@@ -151,7 +156,8 @@ fn own_inputs(opened: &Opened, target: &Path) -> Outcome<()> {
     let grid = match &plan.grid {
         GridPlan::Like(file) | GridPlan::Region { region: file, .. } => file,
     };
-    let inputs = plan.layers.iter().map(|l| &l.file).chain(&plan.records.files).chain([grid]);
+    let records = plan.records.files().map(|(f, _)| f);
+    let inputs = plan.layers.iter().map(|l| l.file.as_str()).chain(records).chain([grid.as_str()]);
     for input in inputs {
         let Ok(path) = opened.folder.join(input).canonicalize() else { continue };
         let name = file_name(input);
@@ -213,7 +219,7 @@ fn study(
     own_inputs(opened, target)?;
     let files = Files::new(&opened.folder);
     let mut staging = Staging::open(target)?;
-    let mut dropped = DroppedTable::create(&mut staging, &opened.plan.records.files)?;
+    let mut dropped = DroppedTable::create(&mut staging, &opened.plan.records.file_names())?;
     let bars = Bars::new(voice.shows_progress());
     let needs = Needs { sources: &files, observer: &bars, memory: memory(common), kept };
     let mut notes = Notes::default();

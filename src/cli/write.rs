@@ -13,7 +13,7 @@ use trodden::output::{
     finish, held_out_units_csv, kept_csv, manifest_json,
 };
 use trodden::plan::StudyPlan;
-use trodden::records::{Rule, Sink};
+use trodden::records::{Detail, Rule, Sink};
 
 /// Value of cells outside the region.
 const NODATA: f64 = -9999.0;
@@ -77,11 +77,12 @@ fn unwritten(path: &str, why: &str) -> Diagnostic {
 }
 
 impl Sink for DroppedTable {
-    fn dropped(&mut self, file: usize, line: u64, rule: Rule, detail: &str) -> Outcome<()> {
+    fn dropped(&mut self, file: usize, line: u64, rule: Rule, detail: &Detail) -> Outcome<()> {
+        let detail = detail.to_string();
         // a detail that would start a spreadsheet formula is kept from it; a negative number is none
         let risky = detail.starts_with(['=', '+', '@'])
             || detail.starts_with('-') && !detail[1..].starts_with(|c: char| c.is_ascii_digit());
-        let detail = if risky { format!("'{detail}") } else { detail.to_owned() };
+        let detail = if risky { format!("'{detail}") } else { detail };
         let file = self.files[file].clone();
         self.row([&file, &line.to_string(), rule.word(), &detail])
     }

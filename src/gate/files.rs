@@ -1,24 +1,22 @@
 //! The inputs of a study as files in a folder.
 
-use std::cell::RefCell;
 use std::collections::BTreeMap;
 use std::path::{Path, PathBuf};
-use std::sync::{Arc, Once};
+use std::sync::{Arc, Mutex, Once};
 
-use gdal::spatial_ref::CoordTransform;
 use gdal::vector::LayerAccess;
 use gdal::{Dataset, DatasetOptions, GdalOpenFlags};
 
 use crate::diag::{Diagnostic, Observer, Outcome, Warnings};
 use crate::grid::{Grid, Region};
 use crate::proxies::{LayerPlan, Measure};
-use crate::records::{RecordsPlan, Row};
+use crate::records::{Collector, RecordsPlan, Screener};
 
 use super::digest::{InputFile, digest};
 use super::remote::remote_source;
 use super::scale::Wander;
 use super::sources::{GridRequest, LayerData, Peek, Sources};
-use super::{crs, features, grid_in, points, scale, table, values};
+use super::{crs, features, grid_in, record_files, scale, table, values};
 
 /// Drivers that reach for a network.
 const NETWORK_DRIVERS: &str = "HTTP WMS WMTS WCS OGCAPI EEDA EEDAI PLMOSAIC DAAS STACIT STACTA NGW PLSCENES \
@@ -49,21 +47,15 @@ pub fn libraries() -> String {
 /// Inputs in a folder, opened as the study asks for them.
 pub struct Files {
     folder: PathBuf,
-    opened: RefCell<Vec<String>>,
-    transforms: RefCell<BTreeMap<String, CoordTransform>>,
-    unknown_datums: RefCell<BTreeMap<String, u64>>,
+    opened: Mutex<Vec<String>>,
+    unknown_datums: Mutex<BTreeMap<String, u64>>,
 }
 
 impl Files {
     /// Paths are relative to this folder.
     pub fn new(folder: &Path) -> Self {
         settle_gdal();
-        Self {
-            folder: folder.to_owned(),
-            opened: RefCell::default(),
-            transforms: RefCell::default(),
-            unknown_datums: RefCell::default(),
-        }
+        Self { folder: folder.to_owned(), opened: Mutex::default(), unknown_datums: Mutex::default() }
     }
 
     /// The path of a file, noted as an input; it must exist and hold something.
@@ -82,9 +74,11 @@ impl Files {
                 .cure("give the real one")
                 .into());
         }
-        if !self.opened.borrow().iter().any(|o| o == file) {
-            self.opened.borrow_mut().push(file.to_owned());
+        let mut opened = self.opened.lock().expect("no thread panics while it notes a file");
+        if !opened.iter().any(|o| o == file) {
+            opened.push(file.to_owned());
         }
+        drop(opened);
         no_network(&path, file)?;
         Ok(path)
     }
@@ -120,7 +114,8 @@ impl Files {
     /// Every input opened so far, with its fingerprint; a shapefile's companions count as inputs.
     pub fn inputs(&self) -> Vec<InputFile> {
         let mut names: Vec<String> = Vec::new();
-        for file in self.opened.borrow().iter() {
+        let opened = self.opened.lock().expect("no thread panics while it notes a file");
+        for file in opened.iter() {
             names.push(file.clone());
             let path = Path::new(file);
             if path.extension().is_some_and(|e| e.eq_ignore_ascii_case("shp")) {
@@ -177,56 +172,40 @@ impl Sources for Files {
     fn records(
         &self,
         plan: &RecordsPlan,
-        each: &mut dyn FnMut(&Row) -> Outcome<()>,
+        (screener, collector): (&Screener, &mut Collector),
         observer: &dyn Observer,
     ) -> Outcome<()> {
-        for (index, file) in plan.files.iter().enumerate() {
-            let path = self.path(file)?;
-            if table::is_text(&path) {
-                table::read(&path, (file, index), plan, each, observer)?;
-            } else {
-                points::read(self, (file, index), plan, each, observer)?;
-            }
+        for (index, (file, _)) in plan.files().enumerate() {
+            record_files::read(self, (file, index), plan, (screener, &mut *collector), observer)?;
         }
         Ok(())
     }
 
     fn project(&self, from: &str, grid: &Grid, x: &mut [f64], y: &mut [f64]) -> Outcome<()> {
-        let key = format!("{from}\n{}", grid.crs.wkt);
-        let mut known = self.transforms.borrow_mut();
-        if !known.contains_key(&key) {
-            let (source, target) = (crs::parse(from, "[records] crs")?, crs::parse(&grid.crs.wkt, "grid")?);
-            let made = crs::transform(&source, &target)
-                .ok_or_else(|| features::no_way("[records] crs", &grid.crs.label))?;
-            known.insert(key.clone(), made);
-        }
-        crs::turn(&known[&key], x, y);
-        Ok(())
+        crs::project(from, &grid.crs, x, y)
+    }
+
+    fn window(&self, from: &str, region: &Region) -> Outcome<Option<[f64; 4]>> {
+        crs::window(from, region)
     }
 
     fn datum<'a>(&self, datum: &'a str, plan: &'a str, records: usize) -> &'a str {
-        if datum.is_empty()
-            || datum.starts_with("GEOGCRS[")
-            || datum.starts_with("PROJCRS[")
-            || datum.contains('[')
-        {
-            return if datum.is_empty() { plan } else { datum };
+        if datum.is_empty() {
+            return plan;
         }
-        if let Some(known) = crs::of_datum(datum) {
+        if datum.contains('[') {
+            return datum; // the CRS of a geometry, as WKT
+        }
+        if let Some(known) = crs::of_datum(datum, plan) {
             return known;
         }
-        let code = datum.to_ascii_uppercase().replace(' ', "");
-        if code.starts_with("EPSG:")
-            && gdal::spatial_ref::SpatialRef::from_definition(&code).is_ok_and(|s| s.is_geographic())
-        {
-            return datum;
-        }
-        *self.unknown_datums.borrow_mut().entry(datum.to_owned()).or_insert(0) += records as u64;
+        let mut unknown = self.unknown_datums.lock().expect("no thread panics while it counts");
+        *unknown.entry(datum.to_owned()).or_insert(0) += records as u64;
         plan
     }
 
     fn remarks(&self) -> Vec<Diagnostic> {
-        let unknown = self.unknown_datums.borrow();
+        let unknown = self.unknown_datums.lock().expect("no thread panics while it counts");
         unknown
             .iter()
             .map(|(datum, records)| {

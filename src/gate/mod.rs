@@ -9,8 +9,10 @@ mod features;
 mod files;
 mod geotiff;
 mod grid_in;
+mod layout;
 mod overlay;
 mod points;
+mod record_files;
 mod remote;
 mod reproject;
 mod scale;
@@ -18,6 +20,7 @@ mod share_out;
 mod sources;
 mod staging;
 mod table;
+mod text;
 mod values;
 
 pub use digest::{InputFile, digest};

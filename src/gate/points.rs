@@ -4,27 +4,40 @@ use gdal::vector::{Feature, FieldValue, LayerAccess};
 
 use crate::diag::{Diagnostic, Observer, Outcome};
 use crate::grid::CrsKind;
-use crate::records::{Content, Place, RecordsPlan, Row};
+use crate::records::{Collector, Content, Place, RecordsPlan, Row, Screener};
 
 use super::crs;
 use super::features::{no_crs, open_layer};
 use super::files::Files;
-use super::table::Columns;
+use super::layout::{Layout, Named, Point, Texts};
 
-/// Streams the features of a vector file.
+/// Features screened together.
+const BATCH: usize = 16_384;
+
+/// The fields of a feature.
+struct Attributes(Vec<String>);
+
+impl Texts for Attributes {
+    fn own(&self, column: usize) -> &str {
+        &self.0[column]
+    }
+}
+
+/// Hands the features of a vector file to the collector.
 pub(super) fn read(
     files: &Files,
     (file, index): (&str, usize),
     plan: &RecordsPlan,
-    each: &mut dyn FnMut(&Row) -> Outcome<()>,
+    (screener, collector): (&Screener, &mut Collector),
     observer: &dyn Observer,
 ) -> Outcome<()> {
+    let (_, source) = plan.files().nth(index).expect("a file of the plan");
     let dataset = files.vector(file)?;
-    let mut layer = open_layer(&dataset, file, plan.table.as_deref())?;
+    let mut layer = open_layer(&dataset, file, source.table.as_deref())?;
     let names: Vec<String> = layer.defn().fields().map(|f| f.name()).collect();
     let geometries = layer.defn().geom_fields().next().is_some()
-        && !plan.columns.stated.iter().any(|s| s == "longitude" || s == "latitude");
-    let columns = Columns::find(&names, plan, file, geometries)?;
+        && !source.columns.stated.iter().any(|s| s == "longitude" || s == "latitude");
+    let layout = Layout::find(&Named::in_order(&names), (plan, source), file, geometries)?;
     let own = if geometries {
         let srs = layer.spatial_ref().ok_or_else(|| no_crs(file))?;
         Some(crs::describe(&srs).ok_or_else(|| no_crs(file))?)
@@ -32,22 +45,27 @@ pub(super) fn read(
         None
     };
     observer.begin(&format!("read {file}"), layer.try_feature_count());
+    let mut batch = screener.batch(index);
     for feature in layer.features() {
-        let texts: Vec<String> = (0..names.len()).map(|i| text(&feature, i)).collect();
-        let at = |column: usize| texts[column].as_str();
-        let named: Vec<&str> = columns.filters().iter().map(|c| at(*c)).collect();
+        let texts = Attributes((0..names.len()).map(|i| text(&feature, i)).collect());
         let line = feature.fid().unwrap_or(0);
-        let point = if geometries { Some(place(&feature, file)?) } else { None };
-        let mut fields = columns.fields(at, point, &named);
-        if let Some(own) = &own {
-            fields.datum = &own.wkt;
-            fields.degrees = Some(own.kind == CrsKind::Geographic);
+        let point = match &own {
+            Some(own) => {
+                let degrees = own.kind == CrsKind::Geographic;
+                Some(Point { place: place(&feature, file)?, wkt: &own.wkt, degrees })
+            }
+            None => None,
+        };
+        layout.fields(&texts, point, |fields| {
+            screener.push(&mut batch, &Row { line, content: Content::Fields(fields) });
+        });
+        if batch.waiting() >= BATCH {
+            collector.take(screener, std::mem::replace(&mut batch, screener.batch(index)))?;
         }
-        each(&Row { file: index, line, content: Content::Fields(fields) })?;
         observer.advance(1);
     }
     observer.end();
-    Ok(())
+    collector.take(screener, batch)
 }
 
 /// Where a feature lies; only points have a place.

@@ -5,7 +5,7 @@ use std::sync::Arc;
 use crate::diag::{Diagnostic, Observer, Outcome, Warnings};
 use crate::grid::{Grid, Region};
 use crate::proxies::{Features, LayerPlan};
-use crate::records::{RecordsPlan, Row};
+use crate::records::{Collector, RecordsPlan, Screener};
 use crate::units::Length;
 
 use super::scale::Wander;
@@ -52,7 +52,7 @@ pub struct Peek {
 }
 
 /// Where the inputs of a study come from.
-pub trait Sources {
+pub trait Sources: Sync {
     /// The grid alone, without reading a mask: what memory is planned from.
     ///
     /// # Errors
@@ -77,14 +77,14 @@ pub trait Sources {
     /// When the input cannot be read, does not reach the grid, or has no value somewhere inside.
     fn layer(&self, plan: &LayerPlan, region: &Arc<Region>, warnings: &mut Warnings) -> Outcome<LayerData>;
 
-    /// Hands every row of the record files to `each`.
+    /// Hands every row of the record files to the collector, screened.
     ///
     /// # Errors
-    /// When a file cannot be read or lacks a column, or when `each` fails.
+    /// When a file cannot be read or lacks a column, or the collector fails.
     fn records(
         &self,
         plan: &RecordsPlan,
-        each: &mut dyn FnMut(&Row) -> Outcome<()>,
+        to: (&Screener, &mut Collector),
         observer: &dyn Observer,
     ) -> Outcome<()>;
 
@@ -94,6 +94,13 @@ pub trait Sources {
     /// # Errors
     /// When the CRS is unknown.
     fn project(&self, from: &str, grid: &Grid, x: &mut [f64], y: &mut [f64]) -> Outcome<()>;
+
+    /// West, south, east, north of a region in the coordinates of a CRS, a little widened; `None` where
+    /// there is no telling.
+    ///
+    /// # Errors
+    /// When the CRS is unknown.
+    fn window(&self, crs: &str, region: &Region) -> Outcome<Option<[f64; 4]>>;
 
     /// Turns the datum of so many records into the CRS to use: its own where it is known, else the
     /// plan's, which is noted.

@@ -24,6 +24,7 @@ fn grid(g: &Grid, cells_inside: Option<usize>, area_m2: Option<f64>) -> Value {
 
 fn records(f: &Finding) -> Value {
     let r = &f.records;
+    let top = r.top_share();
     let dropped: Map<String, Value> =
         Rule::ALL.iter().map(|rule| (rule.word().to_owned(), json!(r.ledger.dropped(*rule)))).collect();
     let names = [Precision::Day, Precision::Range, Precision::Month, Precision::Year]
@@ -41,7 +42,7 @@ fn records(f: &Finding) -> Value {
             "empty_share": Value::Null,
         },
         "effective_observers": r.effective_observers, "effective_datasets": r.effective_datasets,
-        "top_share": {"observer": r.top_share[0], "dataset": r.top_share[1], "cell": r.top_share[2]},
+        "top_share": {"observer": top[0], "dataset": top[1], "cell": top[2]},
     })
 }
 

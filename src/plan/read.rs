@@ -68,7 +68,8 @@ fn read_grid(log: &mut Log, top: &Table) -> Option<GridPlan> {
 }
 
 fn read_records(log: &mut Log, top: &Table) -> Option<RecordsPlan> {
-    records::read(&open(log, top, "records", "records")?)
+    let table = open(log, top, "records", "records")?;
+    records::read(log, &table)
 }
 
 /// The tables of a list, opened and with names of their own.
@@ -136,12 +137,13 @@ mod tests {
         assert_eq!(plan.seed, Seed(1));
         assert_eq!(plan.grid, GridPlan::Like("t.tif".into()));
         let records = &plan.records;
-        assert_eq!(records.files, ["r.tsv"]);
-        assert_eq!((records.crs.as_str(), records.count, records.quotes), ("EPSG:4326", Count::Visits, None));
+        let [source] = records.sources.as_slice() else { panic!("one source is due") };
+        assert_eq!(source.files, ["r.tsv"]);
+        assert_eq!((source.crs.as_str(), records.count, source.quotes), ("EPSG:4326", Count::Visits, None));
         assert_eq!((records.dates, records.max_uncertainty, records.snap), (None, None, None));
-        assert_eq!(records.columns.longitude, "decimalLongitude");
-        assert_eq!(records.columns.uncertainty, "coordinateUncertaintyInMeters");
-        assert!(records.columns.stated.is_empty() && records.keep.is_empty() && plan.layers.is_empty());
+        assert_eq!(source.columns.longitude, "decimalLongitude");
+        assert_eq!(source.columns.uncertainty, "coordinateUncertaintyInMeters");
+        assert!(source.columns.stated.is_empty() && records.keep.is_empty() && plan.layers.is_empty());
         assert_eq!(plan.candidates.len(), 2);
         assert!(matches!(&plan.candidates[0].kind, CandidateKind::Density(d) if d.bandwidth == Fit::Fitted));
         assert_eq!(
@@ -165,8 +167,10 @@ mod tests {
             GridPlan::Region { region: "region.gpkg".into(), crs: "EPSG:3035".into(), cell, touching: true };
         assert_eq!(plan.grid, grid);
         let records = &plan.records;
-        assert_eq!(records.columns.stated, ["longitude", "latitude"]);
-        assert_eq!((records.quotes, records.snap), (Some(Quotes::None), Some(Length::Cells(1.0))));
+        assert_eq!(records.sources[0].columns.stated, ["longitude", "latitude"]);
+        assert_eq!(records.sources[1].columns.stated, ["longitude", "observer"]);
+        assert_eq!((records.sources[0].quotes, records.snap), (Some(Quotes::None), Some(Length::Cells(1.0))));
+        assert_eq!((records.cap.observer, records.cap.dataset), (Some(0.125), None));
         assert_eq!(records.max_uncertainty, Metres::new(1500.0));
         assert_eq!(records.keep.len(), 2);
         assert_eq!(records.keep[1].values, [""]);

@@ -1,8 +1,11 @@
 //! Reads `[records]`.
 
+use super::log::Log;
 use super::table::{Table, entries};
 use super::values::elements;
-use crate::records::{ColumnValues, Columns, Count, DateRange, Precision, Quotes, RecordsPlan};
+use crate::records::{
+    CapPlan, ColumnValues, Columns, Count, DateRange, Precision, Quotes, RecordsPlan, SourcePlan,
+};
 use crate::units::Length;
 
 /// The keys that name columns, with the Darwin Core terms they default to.
@@ -17,14 +20,10 @@ pub(super) const COLUMNS: [(&str, &str); 7] = [
 ];
 
 /// Reads the records' settings; `None` when something that was reported is wrong.
-pub(super) fn read(table: &Table) -> Option<RecordsPlan> {
+pub(super) fn read(log: &mut Log, table: &Table) -> Option<RecordsPlan> {
     let length = |key: &str| table.text(key).and_then(|text| Length::parse(text).ok());
     Some(RecordsPlan {
-        files: files(table)?,
-        table: table.string("table"),
-        quotes: table.text("quotes").map(|word| if word == "none" { Quotes::None } else { Quotes::Double }),
-        columns: columns(table),
-        crs: table.string("crs").unwrap_or_else(|| "EPSG:4326".into()),
+        sources: sources(log, table)?,
         dates: table.text("dates").and_then(DateRange::parse).map(normalised),
         max_uncertainty: length("max_uncertainty").and_then(|length| match length {
             Length::Metres(metres) => Some(metres),
@@ -38,7 +37,68 @@ pub(super) fn read(table: &Table) -> Option<RecordsPlan> {
             Some("places") => Count::Places,
             _ => Count::Visits,
         },
+        cap: cap(log, table),
     })
+}
+
+/// Keys that say how files are read; without `file` beside them they say nothing.
+const HOW: [&str; 10] = [
+    "table",
+    "quotes",
+    "longitude",
+    "latitude",
+    "crs",
+    "date",
+    "observer",
+    "dataset",
+    "taxon",
+    "uncertainty",
+];
+
+/// The files of `[records]` itself, then each `[[records.source]]`.
+fn sources(log: &mut Log, table: &Table) -> Option<Vec<SourcePlan>> {
+    let others: Vec<Table> = table
+        .item("source")
+        .into_iter()
+        .flat_map(|item| elements(item))
+        .filter_map(|element| Table::open(log, "records.source", element.value))
+        .collect();
+    if others.is_empty() {
+        table.require(log, "file");
+    }
+    let own = table.has("file").then(|| source(table));
+    if own.is_none() && !others.is_empty() {
+        table.misplaced(log, &HOW, |key| {
+            format!("`{key}` says how the files of [records] are read, which names none; each `[[records.source]]` has keys of its own")
+        });
+    }
+    own.into_iter().chain(others.iter().map(source)).collect()
+}
+
+fn source(table: &Table) -> Option<SourcePlan> {
+    Some(SourcePlan {
+        files: files(table)?,
+        table: table.string("table"),
+        quotes: table.text("quotes").map(|word| if word == "none" { Quotes::None } else { Quotes::Double }),
+        columns: columns(table),
+        crs: table.string("crs").unwrap_or_else(|| "EPSG:4326".into()),
+    })
+}
+
+/// Caps as shares; visits can be weighed, places cannot.
+fn cap(log: &mut Log, table: &Table) -> CapPlan {
+    let Some(item) = table.item("cap") else { return CapPlan::default() };
+    if table.text("count") == Some("places") {
+        let text =
+            "`cap` weighs the visits of each observer, but `count = \"places\"` counts each place once";
+        log.say(&item.at, "misplaced_key", text, "remove `cap`, or count \"visits\" or \"records\"");
+    }
+    let entries = item.value.get_ref().as_table().map(entries).unwrap_or_default();
+    let share = |key: &str| {
+        let text = entries.iter().find(|e| e.key == key)?.text()?;
+        text.trim().trim_end_matches('%').trim().parse::<f64>().ok().map(|percent| percent / 100.0)
+    };
+    CapPlan { observer: share("observer"), dataset: share("dataset") }
 }
 
 fn files(table: &Table) -> Option<Vec<String>> {

@@ -9,7 +9,7 @@ use crate::check::HoldoutPlan;
 use crate::model::{CandidateKind, CandidatePlan, Fit, TermPlan};
 use crate::output::{Choice, OutputPlan, SurfacePlan};
 use crate::proxies::{LayerPlan, Measure};
-use crate::records::{ColumnValues, Columns, DateRange, Precision, Quotes, RecordsPlan};
+use crate::records::{CapPlan, ColumnValues, Columns, DateRange, Precision, Quotes, RecordsPlan, SourcePlan};
 use crate::units::Length;
 
 /// The plan with every default written out, such that reading its text gives an equal plan.
@@ -58,6 +58,23 @@ fn grid(plan: &GridPlan) -> Table {
 }
 
 fn records(plan: &RecordsPlan) -> Table {
+    let mut table = plan.sources.first().map(source).unwrap_or_default();
+    maybe(&mut table, "dates", plan.dates.map(dates));
+    maybe(&mut table, "max_uncertainty", plan.max_uncertainty.map(|m| exactly(Length::Metres(m))));
+    maybe(&mut table, "keep", column_values(&plan.keep));
+    maybe(&mut table, "leave_out", column_values(&plan.leave_out));
+    maybe(&mut table, "snap", plan.snap.map(exactly));
+    put(&mut table, "count", plan.count.word());
+    put(&mut table, "empty_visits", "ignore");
+    maybe(&mut table, "cap", cap(plan.cap));
+    put(&mut table, "sensitive", false);
+    if plan.sources.len() > 1 {
+        put(&mut table, "source", plan.sources[1..].iter().map(source).collect::<Vec<Table>>());
+    }
+    table
+}
+
+fn source(plan: &SourcePlan) -> Table {
     let mut table = Table::new();
     put(&mut table, "file", plan.files.clone());
     maybe(&mut table, "table", plan.table.as_deref());
@@ -67,15 +84,21 @@ fn records(plan: &RecordsPlan) -> Table {
         put(&mut table, key, column);
     }
     put(&mut table, "crs", plan.crs.as_str());
-    maybe(&mut table, "dates", plan.dates.map(dates));
-    maybe(&mut table, "max_uncertainty", plan.max_uncertainty.map(|m| exactly(Length::Metres(m))));
-    maybe(&mut table, "keep", column_values(&plan.keep));
-    maybe(&mut table, "leave_out", column_values(&plan.leave_out));
-    maybe(&mut table, "snap", plan.snap.map(exactly));
-    put(&mut table, "count", plan.count.word());
-    put(&mut table, "empty_visits", "ignore");
-    put(&mut table, "sensitive", false);
     table
+}
+
+fn cap(plan: CapPlan) -> Option<Table> {
+    let mut table = Table::new();
+    maybe(&mut table, "observer", plan.observer.map(percent));
+    maybe(&mut table, "dataset", plan.dataset.map(percent));
+    (!table.is_empty()).then_some(table)
+}
+
+/// A share as a percentage that reads as the very same share.
+fn percent(share: f64) -> String {
+    let near = share * 100.0;
+    let exact = [near, near.next_down(), near.next_up()].into_iter().find(|p| p / 100.0 == share);
+    format!("{} %", exact.unwrap_or(near))
 }
 
 fn stated_columns(columns: &Columns) -> Vec<(&'static str, &str)> {
@@ -254,7 +277,13 @@ leave_out = { scientificName = ["Focalis exempli"] }
 snap = "1 cells"
 count = "records"
 empty_visits = "ignore"
+cap = { observer = "12.5 %" }
 sensitive = false
+[[records.source]]
+file = "c.csv"
+longitude = "lon"
+observer = "who"
+crs = "EPSG:4258"
 [[layer]]
 name = "roads"
 measure = "distance"

@@ -74,6 +74,9 @@ fn single_completed(from: &str, to: &str) -> Option<DateRange> {
 /// One date without a slash.
 fn single(text: &str) -> Option<DateRange> {
     let day_part = strip_time(text)?;
+    if let [y1, y2, y3, y4, b'-', m1, m2, b'-', d1, d2] = *day_part.as_bytes() {
+        return plain_day([y1, y2, y3, y4], [m1, m2], [d1, d2]);
+    }
     let span = |first: Date, last: Date, precision| Some(DateRange { first, last, precision });
     let day = |d: Option<Date>| d.and_then(|d| span(d, d, Precision::Day));
     let parts: Vec<&str> = day_part.split('-').collect();
@@ -99,6 +102,17 @@ fn single(text: &str) -> Option<DateRange> {
         [y, m, d] if y.len() == 4 && m.len() <= 2 && d.len() <= 2 => day(ymd(y, m, d)),
         _ => None,
     }
+}
+
+/// A day written `YYYY-MM-DD`, as nearly all are.
+fn plain_day(year: [u8; 4], month: [u8; 2], day: [u8; 2]) -> Option<DateRange> {
+    let number = |digits: &[u8]| {
+        let digit = |n: Option<i16>, b: &u8| Some(n? * 10 + i16::from(b.is_ascii_digit().then(|| b - b'0')?));
+        digits.iter().fold(Some(0), digit)
+    };
+    let (year, month, day) = (number(&year)?, number(&month)?, number(&day)?);
+    let date = Date::new(year, month as i8, day as i8).ok()?;
+    Some(DateRange { first: date, last: date, precision: Precision::Day })
 }
 
 /// The day part of a date-time; `None` when what follows the day is no time.

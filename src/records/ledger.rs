@@ -103,6 +103,13 @@ impl Ledger {
         self.dropped[rule as usize] += 1;
     }
 
+    /// Adds the counts of another ledger.
+    pub fn join(&mut self, other: &Self) {
+        self.kept += other.kept;
+        self.snapped += other.snapped;
+        self.dropped.iter_mut().zip(other.dropped).for_each(|(mine, theirs)| *mine += theirs);
+    }
+
     /// Rows read.
     pub fn read(&self) -> u64 {
         self.kept + self.dropped.iter().sum::<u64>()

@@ -3,25 +3,35 @@
 //!
 //! Knows no file formats and fits nothing.
 
+mod batch;
 mod blocks;
+mod caps;
 mod collect;
 mod dates;
 mod holdout;
 mod ledger;
+mod names;
+mod piles;
 mod row;
 mod screen;
 mod settings;
+mod shares;
+mod signs;
+mod smells;
 mod snap;
 mod split;
 mod units;
 mod visits;
 
+pub use batch::{Batch, Detail, Projection, Screener};
 pub use blocks::Blocks;
-pub use collect::{Collector, Kept, Project, Sink};
+pub use caps::{Capped, Groups};
+pub use collect::{Collector, Gathering, Kept, Sink};
 pub use dates::{DateRange, Precision};
 pub use holdout::{HoldoutPlan, Split};
 pub use ledger::{Ledger, Rule};
+pub use piles::Pile;
 pub use row::{Content, Fields, Place, Row};
-pub use settings::{ColumnValues, Columns, Count, Quotes, RecordsPlan};
+pub use settings::{CapPlan, ColumnValues, Columns, Count, Quotes, RecordsPlan, SourcePlan};
 pub use split::{Folds, HeldOut, Training};
 pub use units::{Records, Unit, VisitFacts, median_uncertainty};

@@ -2,9 +2,7 @@
 
 /// A row, readable or not.
 pub struct Row<'a> {
-    /// Which file of the plan's list, from 0.
-    pub file: usize,
-    /// Line of a text from 1, or feature id.
+    /// Line of a text from 1, counted from where its batch begins; or feature id.
     pub line: u64,
     /// What it holds.
     pub content: Content<'a>,
@@ -13,8 +11,8 @@ pub struct Row<'a> {
 /// What a row holds.
 #[allow(clippy::large_enum_variant, reason = "one row lives at a time, on the stack")]
 pub enum Content<'a> {
-    /// Nothing that can be read, and why.
-    Unreadable(&'a str),
+    /// Nothing that can be read, why, and over how many lines it runs.
+    Unreadable(&'a str, u64),
     /// The fields asked for.
     Fields(Fields<'a>),
 }

@@ -11,23 +11,57 @@ pub struct Passed {
     pub xy: (f64, f64),
     /// Its date, where readable.
     pub date: Option<DateRange>,
-    /// Radius of uncertainty in metres, where stated and positive.
-    pub uncertainty: Option<f64>,
+    /// Its radius of uncertainty.
+    pub radius: Radius,
+}
+
+/// What a row says of its radius of uncertainty.
+#[derive(Debug, Clone, Copy, PartialEq)]
+pub enum Radius {
+    /// So many metres.
+    Metres(f64),
+    /// Nothing.
+    Unknown,
+    /// Zero or less, which no place can be: treated as unknown.
+    NotPositive,
+    /// Something that is no number: treated as unknown.
+    Unreadable,
+}
+
+impl Radius {
+    /// The radius, where it is known.
+    pub fn metres(self) -> Option<f64> {
+        if let Self::Metres(m) = self { Some(m) } else { None }
+    }
+
+    fn read(text: &str) -> Self {
+        let text = text.trim();
+        match text.parse::<f64>() {
+            _ if text.is_empty() => Self::Unknown,
+            Ok(m) if m > 0.0 && m.is_finite() => Self::Metres(m),
+            Ok(m) if m <= 0.0 => Self::NotPositive,
+            _ => Self::Unreadable,
+        }
+    }
 }
 
 /// Applies the rules from `absent` to `not_kept`; the first that applies counts.
-pub fn screen(fields: &Fields, plan: &RecordsPlan, degrees: bool) -> Result<Passed, (Rule, String)> {
+pub fn screen(
+    fields: &Fields,
+    plan: &RecordsPlan,
+    degrees: bool,
+    date: Option<DateRange>,
+) -> Result<Passed, (Rule, String)> {
     if let Some(why) = absent(fields) {
         return Err((Rule::Absent, why));
     }
     let xy = coordinates(fields.place, degrees)?;
-    let uncertainty = positive(fields.uncertainty);
-    if let (Some(limit), Some(radius)) = (plan.max_uncertainty, uncertainty)
+    let uncertainty = Radius::read(fields.uncertainty);
+    if let (Some(limit), Some(radius)) = (plan.max_uncertainty, uncertainty.metres())
         && radius > limit.get()
     {
         return Err((Rule::TooVague, format!("{radius} m")));
     }
-    let date = date_of(fields);
     if let Some(range) = plan.dates {
         let date = date.ok_or_else(|| (Rule::NoDate, fields.date.to_owned()))?;
         if !range.contains(&date) {
@@ -41,7 +75,7 @@ pub fn screen(fields: &Fields, plan: &RecordsPlan, degrees: bool) -> Result<Pass
     if let Some(i) = (0..keep.len()).find(|&i| !names(&plan.keep[i], keep[i])) {
         return Err((Rule::NotKept, format!("{}={}", plan.keep[i].column, keep[i])));
     }
-    Ok(Passed { xy, date, uncertainty })
+    Ok(Passed { xy, date, radius: uncertainty })
 }
 
 /// The row's date, from its date column or else from year, month and day.
@@ -86,8 +120,8 @@ fn absent(fields: &Fields) -> Option<String> {
     {
         return Some(format!("status {}", fields.status));
     }
-    let none = fields.individuals.trim().parse::<f64>().is_ok_and(|n| n == 0.0);
-    none.then(|| "individual count 0".to_owned())
+    let none = || fields.individuals.trim().parse::<f64>().is_ok_and(|n| n == 0.0);
+    (fields.individuals.contains('0') && none()).then(|| "individual count 0".to_owned())
 }
 
 /// Coordinates as numbers within their legal range.
@@ -117,9 +151,4 @@ fn coordinates(place: Place, degrees: bool) -> Result<(f64, f64), (Rule, String)
         return Err((Rule::ZeroZero, String::new()));
     }
     Ok((x, y))
-}
-
-/// A radius of uncertainty; zero, negative and unreadable ones are unknown.
-fn positive(text: &str) -> Option<f64> {
-    text.trim().parse::<f64>().ok().filter(|v| *v > 0.0 && v.is_finite())
 }

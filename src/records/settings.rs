@@ -64,12 +64,12 @@ pub struct ColumnValues {
     pub values: Vec<String>,
 }
 
-/// `[records]` of a plan.
+/// Files of one layout.
 #[derive(Debug, Clone, PartialEq)]
-pub struct RecordsPlan {
-    /// The files, as the plan writes them (relative to its folder); one record set.
+pub struct SourcePlan {
+    /// The files, as the plan writes them (relative to its folder).
     pub files: Vec<String>,
-    /// Layer inside a container.
+    /// Layer or table inside a container.
     pub table: Option<String>,
     /// How fields are quoted; `None`: by kind of text.
     pub quotes: Option<Quotes>,
@@ -77,6 +77,22 @@ pub struct RecordsPlan {
     pub columns: Columns,
     /// CRS of the columns.
     pub crs: String,
+}
+
+/// The most that one observer, and one data set, may weigh, as shares of the whole.
+#[derive(Debug, Clone, Copy, PartialEq, Default)]
+pub struct CapPlan {
+    /// The most one observer may weigh.
+    pub observer: Option<f64>,
+    /// The most one data set may weigh.
+    pub dataset: Option<f64>,
+}
+
+/// `[records]` of a plan.
+#[derive(Debug, Clone, PartialEq)]
+pub struct RecordsPlan {
+    /// Where the records are: the files of `[records]` itself first, then each `[[records.source]]`.
+    pub sources: Vec<SourcePlan>,
     /// Keep only records whose whole span lies in this range.
     pub dates: Option<DateRange>,
     /// Drop what is vaguer.
@@ -89,4 +105,18 @@ pub struct RecordsPlan {
     pub snap: Option<Length>,
     /// What is counted.
     pub count: Count,
+    /// The most that one observer or data set may weigh.
+    pub cap: CapPlan,
+}
+
+impl RecordsPlan {
+    /// All files with the source they belong to; a file's number is its place in this list.
+    pub fn files(&self) -> impl Iterator<Item = (&str, &SourcePlan)> {
+        self.sources.iter().flat_map(|s| s.files.iter().map(move |f| (f.as_str(), s)))
+    }
+
+    /// The names of all files, one after another.
+    pub fn file_names(&self) -> Vec<String> {
+        self.files().map(|(f, _)| f.to_owned()).collect()
+    }
 }

@@ -11,6 +11,7 @@ use crate::maths::random::Stream;
 use crate::units::Seed;
 
 use super::blocks::Blocks;
+use super::caps::Groups;
 use super::holdout::Split;
 use super::units::{Records, Unit};
 
@@ -21,12 +22,22 @@ pub struct Training {
     units: Vec<Unit>,
     available: Option<Vec<bool>>,
     outings: bool,
+    groups: Option<Arc<Groups>>,
 }
 
 impl Training {
     /// All records of the study.
     pub fn all(records: &Records, region: Arc<Region>) -> Self {
-        Self { region, units: records.units.clone(), available: None, outings: records.outings }
+        let groups = records.groups.clone();
+        Self { region, units: records.units.clone(), available: None, outings: records.outings, groups }
+    }
+
+    /// Caps are met inside the part alone.
+    fn weighed(mut self) -> Self {
+        if let Some(groups) = self.groups.clone() {
+            groups.weigh(&mut self.units);
+        }
+        self
     }
 
     /// The region.
@@ -75,7 +86,7 @@ impl Training {
         let part = |fold: usize| {
             let (left_out, units): (Vec<Unit>, Vec<Unit>) =
                 self.units.iter().partition(|u| usize::from(of_group[group(u) as usize]) == fold);
-            (Self { units, ..self.clone() }, left_out)
+            (Self { units, ..self.clone() }.weighed(), left_out)
         };
         (0..folds).map(part).filter(|(t, l)| !l.is_empty() && t.units.len() > 1).collect()
     }
@@ -173,8 +184,9 @@ impl Folds {
             units: units(false).map(|(_, u)| *u).collect(),
             available: cells.as_ref().map(|c| c.iter().map(|held| !held).collect()),
             outings: records.outings,
+            groups: records.groups.clone(),
         };
-        (training, HeldOut { units: units(true).map(|(i, u)| (i, *u)).collect(), cells })
+        (training.weighed(), HeldOut { units: units(true).map(|(i, u)| (i, *u)).collect(), cells })
     }
 }
 
@@ -225,13 +237,15 @@ impl Training {
     /// A training part of units of weight 1 in these cells, each an outing of its own.
     pub(crate) fn of_cells(region: Arc<Region>, cells: &[u32]) -> Self {
         let unit = |(i, cell): (usize, &u32)| Unit {
+            number: i as u32,
             cell: *cell,
             weight: 1.0,
             outing: i as u32,
             uncertainty: f32::NAN,
             offset: [0.0; 2],
         };
-        Self { region, units: cells.iter().enumerate().map(unit).collect(), available: None, outings: true }
+        let units = cells.iter().enumerate().map(unit).collect();
+        Self { region, units, available: None, outings: true, groups: None }
     }
 
     /// The same units in other outings.

@@ -1,13 +1,19 @@
 //! Screened records, gathered into units of effort.
 
+use std::sync::Arc;
+
 use crate::units::Metres;
 
+use super::caps::{Capped, Groups};
 use super::ledger::Ledger;
+use super::piles::Pile;
 use super::settings::Count;
 
 /// One unit of effort: a visit, its records, or a place.
 #[derive(Debug, Clone, Copy, PartialEq)]
 pub struct Unit {
+    /// Its number among all units of the study.
+    pub number: u32,
     /// Compact index of its cell.
     pub cell: u32,
     /// What it weighs.
@@ -61,13 +67,27 @@ pub struct Records {
     pub effective_observers: Option<f64>,
     /// Inverse Simpson number of data sets, by units; `None` without the column.
     pub effective_datasets: Option<f64>,
-    /// Largest share of units of one observer, one data set, one cell.
-    pub top_share: [Option<f64>; 3],
+    /// The observer, the data set and the cell with the largest share of the units, and that share;
+    /// observers and data sets by the rank of their names.
+    pub top: [Option<(u32, f64)>; 3],
     /// Rows with a date to the day, as a range, month, year, and without a readable one.
     pub dates: [u64; 5],
+    /// Lattices on which kept coordinates lie, coarsest first, with the share of those that do.
+    pub lattices: Vec<(&'static str, f64)>,
+    /// The places that most records share to the last digit.
+    pub piles: Vec<Pile>,
+    /// What caps did.
+    pub capped: Vec<Capped>,
+    /// Whose each unit is, where a cap needs to know.
+    pub groups: Option<Arc<Groups>>,
 }
 
 impl Records {
+    /// Largest share of units of one observer, one data set, one cell.
+    pub fn top_share(&self) -> [Option<f64>; 3] {
+        self.top.map(|t| t.map(|(_, share)| share))
+    }
+
     /// Total weight of the units.
     pub fn weight(&self) -> f64 {
         crate::maths::sum::sum(self.units.iter().map(|u| u.weight))

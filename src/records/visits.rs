@@ -1,54 +1,38 @@
-//! Distinct visits, told by observer, date and cell, and how they are shared out.
+//! Distinct visits, told by observer, date and cell.
+//!
+//! They are kept in parts by cell, so that several threads can count at once; the parts, and the
+//! order within them, do not depend on how many there are.
 
 use std::collections::BTreeMap;
+use std::hash::BuildHasher;
 
+use hashbrown::{DefaultHashBuilder, HashTable};
+use rayon::prelude::*;
+
+use super::batch::{Batch, Placed};
 use super::dates::DateRange;
-use super::settings::Count;
-use super::units::{Unit, VisitFacts};
+use super::names::Names;
+
+/// Parts in which visits are counted.
+pub(super) const PARTS: usize = 8;
+
+/// The part a cell belongs to.
+pub(super) fn part_of(cell: u32) -> usize {
+    (cell.wrapping_mul(0x9E37_79B1) >> 29) as usize
+}
+
+/// First and last day as numbers; `None` where the date is unknown.
+pub(super) type Days = Option<(i32, i32)>;
 
 /// What distinguishes a visit: cell, observer, first and last day.
-pub(super) type VisitKey = (u32, u32, Option<(i32, i32)>);
+pub(super) type VisitKey = (u32, u32, Days);
 
-/// Text interned as numbers; 0 is the unknown.
-#[derive(Default)]
-#[allow(clippy::disallowed_types, reason = "looked up only, never iterated")]
-pub(super) struct Names {
-    numbers: std::collections::HashMap<String, u32>,
-    names: Vec<String>,
-}
-
-impl Names {
-    pub(super) fn number(&mut self, name: &str) -> u32 {
-        if name.is_empty() {
-            return 0;
-        }
-        if let Some(&n) = self.numbers.get(name) {
-            return n;
-        }
-        self.names.push(name.to_owned());
-        let n = self.names.len() as u32;
-        self.numbers.insert(name.to_owned(), n);
-        n
-    }
-
-    /// Rank of each number in the order of the names, so that results do not depend on row order.
-    pub(super) fn order(&self) -> Vec<u32> {
-        let mut by_name: Vec<u32> = (1..=self.names.len() as u32).collect();
-        by_name.sort_unstable_by_key(|&n| &self.names[n as usize - 1]);
-        let mut order = vec![0; self.names.len() + 1];
-        by_name.iter().enumerate().for_each(|(rank, &n)| order[n as usize] = rank as u32 + 1);
-        order
-    }
-}
-
-/// The distinct visits and how many records each has.
-#[derive(Default)]
-#[allow(clippy::disallowed_types, reason = "looked up only, never iterated")]
-pub(super) struct Visits {
-    numbers: std::collections::HashMap<VisitKey, u32>,
-    pub(super) found: Vec<Visit>,
-    /// Records of a visit that belong to another data set than its first, by visit and data set.
-    pub(super) others: BTreeMap<(u32, u32), u32>,
+/// A record that was kept, of those who want to check: file, line, and its visit in its part.
+#[derive(Clone, Copy)]
+pub(super) struct KeptRow {
+    pub(super) file: u32,
+    pub(super) line: u64,
+    pub(super) visit: u32,
 }
 
 #[derive(Clone, Copy)]
@@ -61,103 +45,139 @@ pub(super) struct Visit {
     pub(super) offset: [i64; 2],
 }
 
-impl Visits {
-    pub(super) fn add(&mut self, key: VisitKey, (dataset, uncertainty, offset): (u32, f32, [i64; 2])) -> u32 {
-        let next = self.found.len() as u32;
-        let n = *self.numbers.entry(key).or_insert(next);
-        if n == next {
-            self.found.push(Visit { key, records: 0, dataset, uncertainty, offset: [0; 2] });
-        }
+/// The visits of one part.
+#[derive(Default)]
+pub(super) struct Part {
+    hasher: DefaultHashBuilder,
+    numbers: HashTable<u32>,
+    pub(super) found: Vec<Visit>,
+    /// Records of a visit that belong to another data set than its first, by visit and data set.
+    pub(super) others: BTreeMap<(u32, u32), u32>,
+    pub(super) kept: Vec<KeptRow>,
+}
+
+impl Part {
+    fn add(&mut self, row: &Placed, observer: u32, dataset: u32) -> u32 {
+        let key = (row.cell, observer, row.days);
+        let hash = self.hasher.hash_one(key);
+        let known = self.numbers.find(hash, |&n| self.found[n as usize].key == key).copied();
+        let n = known.unwrap_or_else(|| self.open(hash, key, dataset, row.radius));
         let visit = &mut self.found[n as usize];
         visit.records += 1;
-        visit.offset[0] += offset[0];
-        visit.offset[1] += offset[1];
+        visit.offset[0] += i64::from(row.offset[0]);
+        visit.offset[1] += i64::from(row.offset[1]);
         if visit.dataset != dataset {
             *self.others.entry((n, dataset)).or_insert(0) += 1;
         }
-        visit.uncertainty = visit.uncertainty.min(uncertainty); // a number beats not-a-number
+        visit.uncertainty = visit.uncertainty.min(row.radius); // a number beats not-a-number
+        n
+    }
+
+    fn open(&mut self, hash: u64, key: VisitKey, dataset: u32, uncertainty: f32) -> u32 {
+        let n = self.found.len() as u32;
+        self.found.push(Visit { key, records: 0, dataset, uncertainty, offset: [0; 2] });
+        let (hasher, found) = (&self.hasher, &self.found);
+        self.numbers.insert_unique(hash, n, |&n| hasher.hash_one(found[n as usize].key));
         n
     }
 }
 
+/// A batch whose names have numbers among all names, and the line its rows are counted from.
+pub(super) struct Numbered {
+    pub(super) batch: Batch,
+    pub(super) observers: Vec<u32>,
+    pub(super) datasets: Vec<u32>,
+    pub(super) line: u64,
+}
+
+/// Counts the rows of batches, in their order, all parts at once; `keep`: remembers each row.
+pub(super) fn count(parts: &mut [Part], batches: &[Numbered], keep: bool) {
+    parts.par_iter_mut().enumerate().for_each(|(p, part)| {
+        for numbered in batches {
+            for row in &numbered.batch.placed[p] {
+                let observer = numbered.observers[row.observer as usize];
+                let visit = part.add(row, observer, numbered.datasets[row.dataset as usize]);
+                if keep {
+                    let (file, line) = (numbered.batch.file, numbered.line + row.line);
+                    part.kept.push(KeptRow { file, line, visit });
+                }
+            }
+        }
+    });
+}
+
+/// All visits in an order that does not depend on the order of rows.
+pub(super) struct Sorted {
+    /// The visits; observers and data sets are numbered by the order of their names.
+    pub(super) visits: Vec<Visit>,
+    /// The number under which each was gathered.
+    pub(super) numbers: Vec<u32>,
+    /// Records of a visit (by the number under which it was gathered) in other data sets than its first.
+    pub(super) others: BTreeMap<(u32, u32), u32>,
+    /// Kept rows with their visit's place in the order.
+    pub(super) kept: Vec<KeptRow>,
+}
+
+/// Brings the parts together.
+pub(super) fn sorted(parts: Vec<Part>, observers: &Names, datasets: &Names) -> Sorted {
+    let (observers, datasets) = (observers.order(), datasets.order());
+    let mut all: Vec<Visit> = Vec::with_capacity(parts.iter().map(|p| p.found.len()).sum());
+    let (mut others, mut kept) = (BTreeMap::new(), Vec::new());
+    for part in parts {
+        let first = all.len() as u32;
+        all.extend(part.found.iter().map(|v| {
+            let key = (v.key.0, observers[v.key.1 as usize], v.key.2);
+            Visit { key, dataset: datasets[v.dataset as usize], ..*v }
+        }));
+        others.extend(part.others.iter().map(|((v, d), n)| ((v + first, datasets[*d as usize]), *n)));
+        kept.extend(part.kept.iter().map(|k| KeptRow { visit: k.visit + first, ..*k }));
+    }
+    let mut numbers: Vec<u32> = (0..all.len() as u32).collect();
+    numbers.par_sort_unstable_by_key(|&i| all[i as usize].key);
+    let mut place = vec![0; numbers.len()];
+    numbers.iter().enumerate().for_each(|(rank, &i)| place[i as usize] = rank as u32);
+    kept.iter_mut().for_each(|k: &mut KeptRow| k.visit = place[k.visit as usize]);
+    kept.sort_unstable_by_key(|k| (k.file, k.line));
+    let visits = numbers.iter().map(|&i| all[i as usize]).collect();
+    Sorted { visits, numbers, others, kept }
+}
+
+/// The outing (observer and date) of each visit, numbered by the first visit of each.
+pub(super) fn outings(visits: &[Visit]) -> Vec<u32> {
+    let key = |i: u32| (visits[i as usize].key.1, visits[i as usize].key.2, i);
+    let mut order: Vec<u32> = (0..visits.len() as u32).collect();
+    order.par_sort_unstable_by_key(|&i| key(i));
+    let mut first = vec![0; visits.len()];
+    for group in order.chunk_by(|&a, &b| (key(a).0, key(a).1) == (key(b).0, key(b).1)) {
+        group.iter().for_each(|&i| first[i as usize] = group[0]);
+    }
+    let mut next = 0;
+    let mut numbers = vec![0; visits.len()];
+    for i in 0..visits.len() {
+        let leader = first[i] as usize;
+        numbers[i] = if leader == i {
+            next += 1;
+            next - 1
+        } else {
+            numbers[leader]
+        };
+    }
+    numbers
+}
+
 /// An observer list as a set: its names, trimmed, sorted, each once.
-pub(super) fn observer_set(text: &str) -> String {
+pub(super) fn observer_set(text: &str) -> std::borrow::Cow<'_, str> {
     if !text.contains('|') {
-        return text.trim().to_owned();
+        return text.trim().into();
     }
     let names: std::collections::BTreeSet<&str> =
         text.split('|').map(str::trim).filter(|n| !n.is_empty()).collect();
-    names.into_iter().collect::<Vec<_>>().join(" | ")
+    names.into_iter().collect::<Vec<_>>().join(" | ").into()
 }
 
-/// First and last day as numbers.
+/// First and last day as numbers that order days.
 pub(super) fn day_numbers(range: DateRange) -> (i32, i32) {
-    let number = |d: jiff::civil::Date| i32::from(d.year()) * 512 + i32::from(d.day_of_year());
+    let number =
+        |d: jiff::civil::Date| i32::from(d.year()) * 512 + i32::from(d.month()) * 32 + i32::from(d.day());
     (number(range.first), number(range.last))
-}
-
-/// What a visit weighs.
-fn weight(visit: &Visit, count: Count) -> f64 {
-    if count == Count::Records { f64::from(visit.records) } else { 1.0 }
-}
-
-fn as_shares(by: &BTreeMap<u32, f64>) -> Vec<f64> {
-    let total: f64 = by.values().sum();
-    by.values().map(|v| v / total).collect()
-}
-
-/// Share of the units by observer.
-pub(super) fn observer_shares(visits: &[Visit], count: Count) -> Vec<f64> {
-    let mut by: BTreeMap<u32, f64> = BTreeMap::new();
-    visits.iter().for_each(|v| *by.entry(v.key.1).or_insert(0.0) += weight(v, count));
-    as_shares(&by)
-}
-
-/// Share of the units by data set; a visit with records of several is divided among them. `numbers`
-/// gives the number under which each visit was gathered.
-pub(super) fn dataset_shares(
-    visits: &[Visit],
-    numbers: &[u32],
-    others: &BTreeMap<(u32, u32), u32>,
-    count: Count,
-) -> Vec<f64> {
-    let mut by: BTreeMap<u32, f64> = BTreeMap::new();
-    for (visit, number) in visits.iter().zip(numbers) {
-        let part = weight(visit, count) / f64::from(visit.records);
-        let mut first = visit.records;
-        for ((_, dataset), records) in others.range((*number, 0)..=(*number, u32::MAX)) {
-            *by.entry(*dataset).or_insert(0.0) += part * f64::from(*records);
-            first -= records;
-        }
-        *by.entry(visit.dataset).or_insert(0.0) += part * f64::from(first);
-    }
-    as_shares(&by)
-}
-
-/// Inverse Simpson number.
-pub(super) fn effective(shares: &[f64]) -> f64 {
-    1.0 / shares.iter().map(|s| s * s).sum::<f64>()
-}
-
-pub(super) fn top(shares: &[f64]) -> f64 {
-    shares.iter().copied().fold(0.0, f64::max)
-}
-
-/// Largest share of one cell; units are sorted by cell.
-pub(super) fn top_cell(units: &[Unit]) -> f64 {
-    let weight = |c: &[Unit]| c.iter().map(|u| u.weight).sum::<f64>();
-    let total = weight(units);
-    units.chunk_by(|a, b| a.cell == b.cell).map(weight).fold(0.0, f64::max) / total
-}
-
-pub(super) fn facts(visits: &[Visit]) -> VisitFacts {
-    let mut sizes: Vec<f64> = visits.iter().map(|v| f64::from(v.records)).collect();
-    sizes.sort_unstable_by(f64::total_cmp);
-    let n = sizes.len() as f64;
-    VisitFacts {
-        count: visits.len() as u64,
-        mean: sizes.iter().sum::<f64>() / n,
-        median: crate::maths::rank::quantile(&sizes, 0.5),
-        single_share: sizes.iter().take_while(|&&s| s == 1.0).count() as f64 / n,
-    }
 }

@@ -9,7 +9,7 @@ use crate::grid::{Grid, Region};
 use crate::output::Stage;
 use crate::plan::{GridPlan, StudyPlan};
 use crate::proxies::{Layer, LayerPlan, Measure, ProxyStack, distance};
-use crate::records::{Collector, Kept, Records, Sink};
+use crate::records::{Collector, Kept, Projection, Records, RecordsPlan, Screener, Sink};
 use crate::units::Bytes;
 
 use super::cost::{Cost, estimate, too_large};
@@ -100,7 +100,7 @@ pub fn gather(plan: &StudyPlan, needs: &Needs, sink: &mut dyn Sink, notes: &mut 
 /// Problems of the files that cannot be brought to a grid that is not there.
 fn absent(plan: &StudyPlan, sources: &dyn Sources) -> Vec<Diagnostic> {
     let layers = plan.layers.iter().map(|l| (l.file.as_str(), l.table.as_deref()));
-    let records = plan.records.files.iter().map(|f| (f.as_str(), plan.records.table.as_deref()));
+    let records = plan.records.files().map(|(f, s)| (f, s.table.as_deref()));
     layers
         .chain(records)
         .filter_map(|(file, table)| sources.peek(file, table).err())
@@ -178,6 +178,41 @@ fn measure(plan: &LayerPlan, needs: &Needs, region: &Arc<Region>, notes: &mut No
     })
 }
 
+/// The way from each source's coordinates to the grid's.
+struct OnGrid<'a> {
+    sources: &'a dyn Sources,
+    region: &'a Region,
+    crs: Vec<&'a str>,
+    degrees: Vec<bool>,
+    windows: Vec<Option<[f64; 4]>>,
+}
+
+impl<'a> OnGrid<'a> {
+    fn new(plan: &'a RecordsPlan, sources: &'a dyn Sources, region: &'a Region) -> Outcome<Self> {
+        let crs: Vec<&str> = plan.sources.iter().map(|s| s.crs.as_str()).collect();
+        let degrees = crs.iter().map(|c| sources.degrees(c)).collect::<Outcome<_>>()?;
+        let windows = crs.iter().map(|c| sources.window(c, region)).collect::<Outcome<_>>()?;
+        Ok(Self { sources, region, crs, degrees, windows })
+    }
+}
+
+impl Projection for OnGrid<'_> {
+    fn degrees(&self, source: usize) -> bool {
+        self.degrees[source]
+    }
+
+    fn window(&self, source: usize) -> Option<[f64; 4]> {
+        self.windows[source]
+    }
+
+    fn turn(&self, source: usize, datum: &str, x: &mut [f64], y: &mut [f64]) -> Outcome<()> {
+        // a datum is about longitude and latitude; the CRS of a geometry comes as WKT
+        let own = if self.degrees[source] || datum.contains('[') { datum } else { "" };
+        let from = self.sources.datum(own, self.crs[source], x.len());
+        self.sources.project(from, self.region.grid(), x, y)
+    }
+}
+
 /// Screens the records and finds their cells.
 fn records(
     plan: &StudyPlan,
@@ -187,19 +222,11 @@ fn records(
     notes: &mut Notes,
 ) -> Outcome<(Records, Vec<Kept>)> {
     let asked = &plan.records;
-    let degrees = needs.sources.degrees(&asked.crs)?;
-    let project = |datum: &str, x: &mut [f64], y: &mut [f64]| {
-        // a datum is about longitude and latitude; the CRS of a geometry comes as WKT
-        let own = if degrees || datum.contains('[') { datum } else { "" };
-        let from = needs.sources.datum(own, &asked.crs, x.len());
-        needs.sources.project(from, region.grid(), x, y)
-    };
-    let mut collector = Collector::new(asked, Arc::clone(region), &project, sink, degrees);
-    if needs.kept {
-        collector = collector.with_kept();
-    }
-    needs.sources.records(asked, &mut |row| collector.push(row), needs.observer)?;
-    let (records, kept, smell) = collector.finish()?;
-    notes.warnings.0.extend(smell);
-    Ok((records, kept))
+    let ground = OnGrid::new(asked, needs.sources, region)?;
+    let screener = Screener::new(asked, Arc::clone(region), &ground);
+    let mut collector = Collector::new(asked, region, sink, needs.kept);
+    needs.sources.records(asked, (&screener, &mut collector), needs.observer)?;
+    let gathering = collector.finish()?;
+    notes.warnings.0.extend(gathering.smells);
+    Ok((gathering.records, gathering.kept))
 }

@@ -61,7 +61,7 @@ pub fn run(
         region,
         records,
         kept,
-        files: plan.records.files.clone(),
+        files: plan.records.file_names(),
         layers,
         holdout: plan.holdout,
         blocks,

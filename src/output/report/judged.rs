@@ -129,7 +129,7 @@ pub(super) fn cautions(f: &Finding) -> Vec<String> {
         )),
         _ => {}
     }
-    let [observer, dataset, cell] = f.records.top_share;
+    let [observer, dataset, cell] = f.records.top_share();
     let mut share = |share: Option<f64>, limit: f64, text: &str| {
         if let Some(s) = share.filter(|s| *s >= limit) {
             out.push(format!("{text} {} of all {units}.", words::percent(s)));

@@ -66,7 +66,7 @@ fn facts(f: &Finding) -> Vec<Value> {
     let people = |v: f64| words::digits(v, 3);
     out.extend(r.effective_observers.map(|v| fact("Effective number of observers", people(v), simpson)));
     out.extend(r.effective_datasets.map(|v| fact("Effective number of data sets", people(v), simpson)));
-    let [observer, dataset, cell] = r.top_share;
+    let [observer, dataset, cell] = r.top_share();
     let tops = [("most active observer", observer), ("largest data set", dataset), ("busiest cell", cell)];
     out.extend(tops.into_iter().filter_map(|(name, share)| {
         Some(fact(&format!("Share of the {name}"), words::percent(share?), &format!("of all {units}")))

@@ -93,7 +93,11 @@ fn records(region: &Arc<Region>, layers: &ProxyStack, wanted: usize) -> Records 
         visits: VisitFacts { count: units.len() as u64, mean: 3.0, median: 2.0, single_share: 0.31 },
         effective_observers: Some(6.3),
         effective_datasets: None,
-        top_share: [Some(0.31), None, Some(0.012)],
+        top: [Some((1, 0.31)), None, Some((0, 0.012))],
+        lattices: Vec::new(),
+        piles: Vec::new(),
+        capped: Vec::new(),
+        groups: None,
         dates: [5000, 40, 13, 7, 21],
         units,
     }

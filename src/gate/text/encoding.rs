@@ -1,0 +1,88 @@
+//! What the bytes of a text stand for: UTF-8, or Latin-1 where a file is plainly written in it.
+
+use std::borrow::Cow;
+use std::io::Read;
+
+use encoding_rs::WINDOWS_1252;
+
+use super::blocks::{Block, Blocks};
+
+/// How bytes become text.
+#[derive(Debug, Clone, Copy, PartialEq, Eq)]
+pub(in crate::gate) enum Encoding {
+    /// UTF-8; a row that is none cannot be read.
+    Utf8,
+    /// Latin-1 (as Windows-1252, which agrees with it wherever Latin-1 has letters).
+    Latin1,
+}
+
+/// What the lines of a text that are not plain ASCII look like.
+#[derive(Debug, Default, Clone, Copy, PartialEq, Eq)]
+pub(in crate::gate) struct Census {
+    /// Lines in UTF-8.
+    pub(in crate::gate) utf8: u64,
+    /// Lines that are none, and could be Latin-1.
+    pub(in crate::gate) latin1: u64,
+}
+
+impl Census {
+    /// Looks at whole lines.
+    fn count(&mut self, lines: &[u8], terminator: u8) {
+        if lines.is_ascii() {
+            return;
+        }
+        for line in lines.split(|b| *b == terminator).filter(|l| !l.is_ascii()) {
+            if std::str::from_utf8(line).is_ok() {
+                self.utf8 += 1;
+            } else if is_latin1(line) {
+                self.latin1 += 1;
+            }
+        }
+    }
+
+    /// The encoding these lines speak for.
+    pub(in crate::gate) fn verdict(self) -> Encoding {
+        if self.latin1 > self.utf8 { Encoding::Latin1 } else { Encoding::Utf8 }
+    }
+}
+
+/// Reads a whole text for what its lines are written in.
+pub(in crate::gate) fn census(source: Box<dyn Read + Send>, terminator: u8) -> std::io::Result<Census> {
+    let mut blocks = Blocks::new(source, Vec::new(), terminator);
+    let mut census = Census::default();
+    while let Some(block) = blocks.next()? {
+        if let Block::Lines { bytes, .. } = block {
+            census.count(&bytes, terminator);
+        }
+    }
+    Ok(census)
+}
+
+/// Whether no byte is one that Windows-1252, and so Latin-1, gives no character.
+pub(in crate::gate) fn is_latin1(bytes: &[u8]) -> bool {
+    !bytes.iter().any(|b| [0x81, 0x8D, 0x8F, 0x90, 0x9D].contains(b))
+}
+
+/// Latin-1 as text.
+pub(in crate::gate) fn decode(bytes: &[u8]) -> Cow<'_, str> {
+    WINDOWS_1252.decode_without_bom_handling(bytes).0
+}
+
+#[cfg(test)]
+mod tests {
+    use super::*;
+
+    fn verdict(text: &[u8]) -> Encoding {
+        census(Box::new(std::io::Cursor::new(text.to_vec())), b'\n').unwrap().verdict()
+    }
+
+    #[test]
+    fn the_majority_of_lines_decides() {
+        assert_eq!(verdict(b"plain\n"), Encoding::Utf8);
+        assert_eq!(verdict("M\u{fc}ller\nJos\u{e9}\n".as_bytes()), Encoding::Utf8);
+        assert_eq!(verdict(b"M\xfcller\nJos\xe9\n"), Encoding::Latin1);
+        assert_eq!(verdict(b"M\xc3\xbcller\nJos\xe9\n"), Encoding::Utf8);
+        assert_eq!(verdict(b"\x81\x8d\n"), Encoding::Utf8);
+        assert_eq!(decode(b"M\xfcller"), "M\u{fc}ller");
+    }
+}
