@@ -2,9 +2,15 @@
 //!
 //! The only room that knows GDAL, files and reference systems. It makes no scientific choice.
 
+#[allow(dead_code, reason = "the text reader takes it up")]
+mod archive;
 mod cells;
+#[allow(dead_code, reason = "the text reader takes it up")]
+mod container;
 mod crs;
 mod digest;
+#[allow(dead_code, reason = "the text reader takes it up")]
+mod encoding;
 mod features;
 mod files;
 mod geotiff;
@@ -18,7 +24,11 @@ mod share_out;
 mod sources;
 mod staging;
 mod table;
+#[allow(dead_code, reason = "the text reader takes it up")]
+mod unpack;
 mod values;
+#[allow(dead_code, reason = "the text reader takes it up")]
+mod zipped;
 
 pub use digest::{InputFile, digest};
 pub use files::{Files, libraries};
