@@ -284,7 +284,15 @@ impl<'a> Page<'a> {
             let text = format!("`<{}>` names no file (`<files><location>`)", table.tag_name().name());
             return Err(self.bad(table.range(), text).into());
         }
-        nodes.into_iter().map(|n| self.location(n)).collect()
+        let mut locations: Vec<String> = Vec::new();
+        for node in nodes {
+            let location = self.location(node)?;
+            if locations.contains(&location) {
+                return Err(self.bad(node.range(), format!("names the file `{location}` twice")).into());
+            }
+            locations.push(location);
+        }
+        Ok(locations)
     }
 
     /// The name in the container of a file that a description refers to.
@@ -381,5 +389,230 @@ fn escape(text: &str) -> Option<(char, usize)> {
             Some((char::from_u32(u32::from_str_radix(digits, 16).ok()?)?, 6))
         }
         _ => None,
+    }
+}
+
+#[cfg(test)]
+mod tests {
+    use std::fs;
+    use std::path::Path;
+
+    use proptest::prelude::*;
+    use tempfile::{TempDir, tempdir};
+
+    use super::{Archive, Container, Encoding, Field, read, unescaped};
+    use crate::diag::{Diagnostic, Outcome};
+
+    /// A folder with a description and empty tables; the place and its hoverflies are invented.
+    #[expect(clippy::disallowed_methods, reason = "a test writes its own inputs")]
+    fn folder(description: &str) -> TempDir {
+        let folder = tempdir().unwrap();
+        for (name, text) in [
+            ("meta.xml", description),
+            ("occurrence.txt", "id\tscientificName\n1\tSkerrowia invented\n"),
+            ("more.txt", ""),
+            ("event.txt", ""),
+        ] {
+            fs::write(folder.path().join(name), text).unwrap();
+        }
+        folder
+    }
+
+    fn opened(folder: &Path) -> Outcome<Option<Archive>> {
+        read(&Container::open(folder, "skerrow")?)
+    }
+
+    fn archive(description: &str) -> Archive {
+        opened(folder(description).path()).unwrap().unwrap()
+    }
+
+    fn fault(description: &str) -> Diagnostic {
+        opened(folder(description).path()).unwrap_err().0.remove(0)
+    }
+
+    const OCCURRENCE: &str = "http://rs.tdwg.org/dwc/terms/Occurrence";
+
+    /// A description with one core, its attributes and what is in it.
+    fn core(attributes: &str, inside: &str) -> String {
+        format!(
+            "<archive xmlns=\"http://rs.tdwg.org/dwc/text/\">\n<core rowType=\"{OCCURRENCE}\" {attributes}>\n\
+             {inside}</core>\n</archive>"
+        )
+    }
+
+    const FILE: &str = "<files><location>occurrence.txt</location></files>\n";
+
+    #[test]
+    fn defaults_of_the_text_guide() {
+        let found = archive(&core("", FILE));
+        assert_eq!(found.core, None);
+        let table = found.records;
+        assert_eq!((table.row_type.as_str(), table.locations), ("Occurrence", vec!["occurrence.txt".into()]));
+        assert_eq!((table.separator, table.quote, table.line_end), (b',', Some(b'"'), b'\n'));
+        assert_eq!((table.encoding, table.header_lines, table.id), (Encoding::Utf8, 0, None));
+    }
+
+    #[test]
+    fn a_layout_spelled_out() {
+        for tab in ["\\t", "&#9;", "\\u0009"] {
+            let attributes = format!(
+                "fieldsTerminatedBy=\"{tab}\" linesTerminatedBy=\"\\r\\n\" fieldsEnclosedBy=\"\" \
+                 encoding=\"ISO-8859-1\" ignoreHeaderLines=\"1\" dateFormat=\"YYYY-MM-DD\""
+            );
+            let table = archive(&core(&attributes, &format!("{FILE}<id index=\"0\"/>"))).records;
+            assert_eq!((table.separator, table.quote, table.line_end), (b'\t', None, b'\n'));
+            assert_eq!((table.encoding, table.header_lines, table.id), (Encoding::Latin1, 1, Some(0)));
+        }
+        assert_eq!(archive(&core("linesTerminatedBy=\"&#13;\"", FILE)).records.line_end, b'\r');
+        assert_eq!(archive(&core("fieldsTerminatedBy='\\\\'", FILE)).records.separator, b'\\');
+        assert_eq!(unescaped("\\u00e9\\x\\"), "é\\x\\");
+    }
+
+    #[test]
+    fn columns_and_constants() {
+        let fields = "<field index=\"2\" term=\"http://rs.tdwg.org/dwc/terms/eventDate\"/>\
+                      <field default=\"EPSG:4326\" term=\"http://rs.tdwg.org/dwc/terms/geodeticDatum\"/>\
+                      <field index=\"3\" default=\"PRESENT\" term=\"http://rs.tdwg.org/dwc/terms/occurrenceStatus\"/>\
+                      <field term=\"http://rs.tdwg.org/dwc/terms/sex\"/>\
+                      <field index=\"4\" term=\"http://purl.org/dc/terms#type\"/>\
+                      <field index=\"5\" term=\"http://rs.tdwg.org/dwc/terms/type\"/>";
+        let found = archive(&core("", &format!("{FILE}{fields}"))).records.columns;
+        let field = |f: &Field| (f.term.clone(), f.index, f.default.clone());
+        assert_eq!(
+            found.iter().map(field).collect::<Vec<_>>(),
+            [
+                ("eventDate".into(), Some(2), None),
+                ("geodeticDatum".into(), None, Some("EPSG:4326".into())),
+                ("occurrenceStatus".into(), Some(3), Some("PRESENT".into())),
+                ("http://purl.org/dc/terms#type".into(), Some(4), None),
+                ("type".into(), Some(5), None),
+            ]
+        );
+    }
+
+    #[test]
+    fn several_locations_without_namespace() {
+        let text = "<archive><core rowType='Occurrence'><files><location>occurrence.txt</location>\
+                    <location> ./more.txt </location></files></core></archive>";
+        assert_eq!(archive(text).records.locations, ["occurrence.txt", "more.txt"]);
+    }
+
+    fn sampling(extensions: &str, id: &str) -> String {
+        format!(
+            "<archive><core rowType='http://rs.tdwg.org/dwc/terms/Event'>{id}\
+             <files><location>event.txt</location></files></core>{extensions}</archive>"
+        )
+    }
+
+    #[test]
+    fn records_as_an_extension() {
+        let extension = format!("<extension rowType='{OCCURRENCE}'>{FILE}<coreid index='1'/></extension>");
+        let others = format!("<extension rowType='urn:Other'/>{extension}");
+        let found = archive(&sampling(&others, "<id index='0'/>"));
+        assert_eq!((found.records.row_type.as_str(), found.records.id), ("Occurrence", Some(1)));
+        let core = found.core.unwrap();
+        assert_eq!(
+            (core.row_type.as_str(), core.id, core.locations),
+            ("Event", Some(0), vec!["event.txt".into()])
+        );
+
+        assert!(fault(&sampling(&extension, "")).text.contains("`<id index"));
+        assert!(fault(&sampling(&extension.repeat(2), "<id index='0'/>")).text.contains("second extension"));
+        let none = fault(&sampling("<extension rowType='urn:x#Media'/>", ""));
+        assert_eq!(none.rule, "no_records");
+        assert!(none.text.contains("`Event`, `Media`"), "{}", none.text);
+    }
+
+    #[test]
+    fn faults_say_where() {
+        let found = fault(&core("", "<files><location>gone.txt</location></files>"));
+        assert_eq!((found.rule, found.place.as_str()), ("no_such_file", "skerrow: meta.xml:3:8"));
+        assert!(
+            found.text.contains("`gone.txt`") && found.text.contains("`occurrence.txt`"),
+            "{}",
+            found.text
+        );
+        let found = fault(&core("", &format!("{FILE}<field index=\"-1\" term=\"a\"/>")));
+        assert_eq!((found.rule, found.place.as_str()), ("bad_archive", "skerrow: meta.xml:4:8"));
+    }
+
+    #[test]
+    fn faults_of_many_kinds() {
+        let field = |attributes: &str| core("", &format!("{FILE}<field {attributes}/>"));
+        let location = |name: &str| core("", &format!("<files><location>{name}</location></files>"));
+        let tables = core("", FILE);
+        let two = tables.replace("</archive>", &format!("<core rowType='x'>{FILE}</core></archive>"));
+        for (text, rule, word) in [
+            ("<archive/>".into(), "bad_archive", "no `<core>`"),
+            (two, "bad_archive", "second `<core>`"),
+            ("<html/>".into(), "bad_archive", "its root is `html`"),
+            (tables.replace("tdwg", "other"), "bad_archive", "its root"),
+            ("<archive><core/></archive>".into(), "no_records", "occurrences"),
+            ("".into(), "bad_archive", "well-formed"),
+            ("<archive>".into(), "bad_archive", "well-formed"),
+            (core("", ""), "bad_archive", "names no file"),
+            (core("", "<files><location/></files>"), "bad_archive", "names no file"),
+            (core("", &FILE.repeat(2)), "bad_archive", "twice"),
+            (location("https://skerrow.example/a.txt"), "remote_path", "network"),
+            (location("../a.txt"), "path_outside", "outside"),
+            (location("/a.txt"), "path_outside", "outside"),
+            (location("C:\\a.txt"), "path_outside", "outside"),
+            (field("index='1'"), "bad_archive", "without `term`"),
+            (field("index='one' term='a'"), "bad_archive", "whole number"),
+            (field("index='+1' term='a'"), "bad_archive", "whole number"),
+            (field("index='99999999999999999999999' term='a'"), "bad_archive", "whole number"),
+            (field("index='10000' term='a'"), "bad_archive", "counted from 0"),
+            (field("index='1' term='urn:a'/><field index='2' term='urn:a'"), "bad_archive", "two fields"),
+            (core("fieldsTerminatedBy='||'", FILE), "unknown_layout", "one ASCII character"),
+            (core("fieldsTerminatedBy='¦'", FILE), "unknown_layout", "one ASCII character"),
+            (core("fieldsTerminatedBy=''", FILE), "bad_archive", "told apart"),
+            (core("fieldsEnclosedBy=','", FILE), "bad_archive", "`fieldsEnclosedBy`"),
+            (core("linesTerminatedBy=';'", FILE), "unknown_layout", "`linesTerminatedBy`"),
+            (core("encoding='UTF-16'", FILE), "unknown_encoding", "UTF-16"),
+            (core("ignoreHeaderLines='x'", FILE), "bad_archive", "`ignoreHeaderLines`"),
+        ] {
+            let found = fault(&text);
+            assert_eq!(found.rule, rule, "{text}: {}", found.text);
+            assert!(found.text.contains(word), "{text}: {}", found.text);
+            assert!(found.place.starts_with("skerrow: meta.xml") && !found.cure.is_empty());
+        }
+    }
+
+    #[test]
+    fn pulls_in_no_other_file() {
+        let outside = "<!DOCTYPE archive [<!ENTITY x SYSTEM \"file:///etc/hostname\">]>";
+        let text = format!("{outside}{}", core("", "<files><location>&x;</location></files>"));
+        assert!(fault(&text).text.contains("DTD"), "{}", fault(&text).text);
+        let unknown = core("", "<files><location>&x;</location></files>");
+        assert!(fault(&unknown).text.contains("well-formed"));
+    }
+
+    #[test]
+    fn deep_nesting_ends_in_an_error() {
+        assert_eq!(fault(&"<archive>".repeat(300_000)).rule, "bad_archive");
+        let balanced = format!("{}{}", "<archive>".repeat(150_000), "</archive>".repeat(150_000));
+        assert_eq!(fault(&balanced).rule, "bad_archive");
+    }
+
+    #[test]
+    fn a_folder_without_description_is_none() {
+        assert_eq!(opened(tempdir().unwrap().path()).unwrap(), None);
+    }
+
+    proptest! {
+        #![proptest_config(ProptestConfig::with_cases(64))]
+
+        #[test]
+        fn arbitrary_bytes_do_not_panic(bytes in prop::collection::vec(any::<u8>(), 0..600)) {
+            drop(opened(folder(&String::from_utf8_lossy(&bytes)).path()));
+        }
+
+        #[test]
+        fn arbitrary_attributes_do_not_panic(value in "[^<&'\\x00-\\x1f]{0,12}", which in 0..7_usize) {
+            let name = ["fieldsTerminatedBy", "linesTerminatedBy", "fieldsEnclosedBy", "encoding",
+                "ignoreHeaderLines", "rowtype", "xmlns:a"][which];
+            let inside = format!("<files><location>{value}</location></files><field index='{value}' term='{value}'/>");
+            drop(opened(folder(&core(&format!("{name}='{value}'"), &inside)).path()));
+        }
     }
 }

@@ -163,3 +163,83 @@ fn top_of(folder: &Path) -> Vec<Member> {
         })
         .collect()
 }
+
+#[cfg(test)]
+#[expect(clippy::disallowed_methods, reason = "a test writes its own inputs")]
+mod tests {
+    use std::fs;
+    use std::io::Read;
+
+    use tempfile::tempdir;
+
+    use super::super::archive;
+    use super::super::zipped::tests::{packed, written};
+    use super::{Container, is_archive_folder};
+
+    const META: &str = "<archive><core rowType='Occurrence'><files><location>data/a.csv</location></files>\
+                        <id index='0'/></core></archive>";
+
+    fn text(container: &Container, name: &str) -> String {
+        let mut text = String::new();
+        container.stream(name).unwrap().read_to_string(&mut text).unwrap();
+        text
+    }
+
+    #[test]
+    fn a_zip_and_a_folder_read_alike() {
+        let folder = tempdir().unwrap();
+        fs::create_dir(folder.path().join("data")).unwrap();
+        fs::write(folder.path().join("meta.xml"), META).unwrap();
+        fs::write(folder.path().join("data/a.csv"), "id\n1\n").unwrap();
+        assert!(is_archive_folder(folder.path()) && !is_archive_folder(&folder.path().join("data")));
+        let zip = written(&packed(&[("meta.xml", META), ("data/a.csv", "id\n1\n")]));
+        for path in [folder.path(), zip.path()] {
+            let container = Container::open(path, "skerrow").unwrap();
+            let found = archive::read(&container).unwrap().unwrap();
+            assert_eq!(found.records.locations, ["data/a.csv"]);
+            assert_eq!(container.member("data/a.csv").unwrap().size, 5);
+            assert_eq!(text(&container, "data/a.csv"), text(&container, "./data/a.csv"));
+            assert_eq!(text(&container, "data/a.csv"), "id\n1\n");
+            assert!(container.member("data").is_none() && container.member("../x").is_none());
+            let Err(gone) = container.stream("gone.csv") else { panic!("opened what is not there") };
+            assert_eq!((gone.0[0].rule, gone.0[0].place.as_str()), ("no_such_file", "skerrow: gone.csv"));
+        }
+    }
+
+    #[test]
+    fn a_single_top_folder_is_stepped_into() {
+        let entries = [
+            ("skerrow/meta.xml", META),
+            ("skerrow/data/a.csv", "id\n"),
+            ("__MACOSX/skerrow/._meta.xml", "x"),
+        ];
+        let zip = written(&packed(&entries));
+        let found = archive::read(&Container::open(zip.path(), "a.zip").unwrap()).unwrap().unwrap();
+        assert_eq!(found.records.locations, ["skerrow/data/a.csv"]);
+        let two = written(&packed(&[("skerrow/meta.xml", META), ("other/a.csv", "id\n")]));
+        assert_eq!(archive::read(&Container::open(two.path(), "a.zip").unwrap()).unwrap(), None);
+    }
+
+    #[test]
+    fn one_table_in_a_zip() {
+        let zip = written(&packed(&[("hoverflies/", ""), ("hoverflies/a.csv", "x\n"), ("__MACOSX/a", "")]));
+        let container = Container::open(zip.path(), "a.zip").unwrap();
+        assert_eq!(archive::read(&container).unwrap(), None);
+        let names: Vec<String> = container.members().into_iter().map(|m| m.name).collect();
+        assert_eq!(names, ["hoverflies/a.csv"]);
+    }
+
+    #[test]
+    fn a_description_too_long_or_in_another_encoding() {
+        let long = " ".repeat(5 << 20);
+        for (bytes, word) in [(long.as_bytes(), "4 MiB"), (b"\xFF\xFE<\0a\0", "UTF-8")] {
+            let folder = tempdir().unwrap();
+            fs::write(folder.path().join("meta.xml"), bytes).unwrap();
+            let found = archive::read(&Container::open(folder.path(), "skerrow").unwrap()).unwrap_err();
+            assert!(found.0[0].text.contains(word), "{}", found.0[0].text);
+        }
+        let marked = format!("\u{FEFF}{META}");
+        let zip = written(&packed(&[("meta.xml", &marked), ("data/a.csv", "id\n")]));
+        assert!(archive::read(&Container::open(zip.path(), "a.zip").unwrap()).unwrap().is_some());
+    }
+}

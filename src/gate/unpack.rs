@@ -133,7 +133,7 @@ fn too_much(text: String) -> io::Error {
 pub(super) fn broken(place: &str, error: &io::Error) -> Diagnostic {
     match error.kind() {
         ErrorKind::FileTooLarge => Diagnostic::input("too_much_inside", place, error.to_string())
-            .cure("check where the file comes from; unpack it yourself if it is sound"),
+            .cure("download it again and check where it comes from; if it is sound, give it unpacked"),
         ErrorKind::UnexpectedEof | ErrorKind::InvalidData | ErrorKind::InvalidInput => {
             Diagnostic::input("cut_off", place, format!("is cut off or damaged: {error}"))
                 .cure("download or pack the file again")

@@ -155,3 +155,214 @@ fn unsound(place: &str, error: &ZipError) -> Diagnostic {
             .cure("download or pack the file again"),
     }
 }
+
+#[cfg(test)]
+pub(super) mod tests {
+    use std::io::{self, Cursor, Read, Write};
+
+    use proptest::prelude::*;
+    use tempfile::NamedTempFile;
+    use zip::write::SimpleFileOptions;
+    use zip::{CompressionMethod, ZipWriter};
+
+    use super::{Zip, broken, inside, is_zip};
+    use crate::diag::Diagnostic;
+
+    /// A zip file of these entries; a name that ends with `/` is a folder.
+    pub(in super::super) fn packed(entries: &[(&str, &str)]) -> Vec<u8> {
+        packed_as(CompressionMethod::Deflated, entries)
+    }
+
+    fn packed_as(method: CompressionMethod, entries: &[(&str, &str)]) -> Vec<u8> {
+        let mut writer = ZipWriter::new(Cursor::new(Vec::new()));
+        let options = SimpleFileOptions::default().compression_method(method);
+        for (name, text) in entries {
+            if name.ends_with('/') {
+                writer.add_directory(*name, options).unwrap();
+            } else {
+                writer.start_file(*name, options).unwrap();
+                writer.write_all(text.as_bytes()).unwrap();
+            }
+        }
+        writer.finish().unwrap().into_inner()
+    }
+
+    /// Bytes as a file.
+    pub(in super::super) fn written(bytes: &[u8]) -> NamedTempFile {
+        let mut file = NamedTempFile::new().unwrap();
+        file.write_all(bytes).unwrap();
+        file
+    }
+
+    fn replaced(bytes: &[u8], from: &[u8], to: &[u8]) -> Vec<u8> {
+        let mut bytes = bytes.to_vec();
+        assert_eq!(from.len(), to.len());
+        let places: Vec<usize> =
+            (0..bytes.len() - from.len()).filter(|at| bytes[*at..].starts_with(from)).collect();
+        assert!(!places.is_empty());
+        for at in places {
+            bytes[at..at + to.len()].copy_from_slice(to);
+        }
+        bytes
+    }
+
+    /// The offset of a field in the first header of the central directory.
+    fn in_directory(bytes: &[u8], offset: usize) -> usize {
+        bytes.windows(4).position(|w| w == b"PK\x01\x02").unwrap() + offset
+    }
+
+    fn refused(bytes: &[u8]) -> Diagnostic {
+        Zip::open(written(bytes).path(), "skerrow.zip").unwrap_err().0.remove(0)
+    }
+
+    /// Reads the first entry to its end.
+    fn first(bytes: &[u8]) -> io::Result<Vec<u8>> {
+        let file = written(bytes);
+        let zip = Zip::open(file.path(), "skerrow.zip").unwrap();
+        let mut text = Vec::new();
+        zip.stream(&zip.entries()[0]).unwrap().read_to_end(&mut text).map(|_| text)
+    }
+
+    fn rows() -> String {
+        (0..20_000_u32).map(|i| format!("{i},Skerrowia invented,{}\n", i * 7919 % 1000)).collect()
+    }
+
+    #[test]
+    fn entries_stream_again_and_again() {
+        for method in [CompressionMethod::Stored, CompressionMethod::Deflated] {
+            let rows = rows();
+            let file = written(&packed_as(method, &[("a/", ""), ("a\\b.csv", &rows), ("c.csv", "x\n")]));
+            assert!(is_zip(file.path()));
+            let zip = Zip::open(file.path(), "skerrow.zip").unwrap();
+            let found: Vec<_> = zip.entries().iter().map(|e| (e.name.as_str(), e.folder, e.size)).collect();
+            assert_eq!(found, [("a", true, 0), ("a/b.csv", false, rows.len() as u64), ("c.csv", false, 2)]);
+            for _ in 0..2 {
+                let mut text = String::new();
+                zip.stream(&zip.entries()[1]).unwrap().read_to_string(&mut text).unwrap();
+                assert_eq!(text, rows);
+            }
+        }
+    }
+
+    #[test]
+    fn told_by_the_first_bytes() {
+        assert!(is_zip(written(&packed(&[])).path()));
+        assert!(!is_zip(written(b"PK").path()));
+        assert!(!is_zip(std::env::temp_dir().as_path()));
+    }
+
+    #[test]
+    fn names_that_lead_outside() {
+        for name in [
+            "../a.csv",
+            "a/../../b.csv",
+            "/a.csv",
+            "\\a.csv",
+            "C:\\a.csv",
+            "c:a.csv",
+            "a\\..\\b.csv",
+            "a\u{7}",
+        ] {
+            assert_eq!(inside(name), None, "{name}");
+            let stand_in = "x".repeat(name.len());
+            let bytes = replaced(&packed(&[(&stand_in, "")]), stand_in.as_bytes(), name.as_bytes());
+            assert_eq!(refused(&bytes).rule, "path_outside", "{name}");
+        }
+        assert_eq!(inside("./a//b\\c..csv").as_deref(), Some("a/b/c..csv"));
+    }
+
+    #[test]
+    fn names_given_twice() {
+        let same = replaced(&packed(&[("a.csv", "1"), ("b.csv", "2")]), b"b.csv", b"a.csv");
+        assert_eq!(refused(&same).rule, "duplicate_entry");
+        for (one, other) in [("a.csv", "A.CSV"), ("a/b.csv", "a\\b.csv"), ("a.csv", "./a.csv")] {
+            let found = refused(&packed(&[(one, ""), (other, "")]));
+            assert_eq!(found.rule, "duplicate_entry", "{one} {other}");
+        }
+    }
+
+    #[test]
+    fn encrypted_or_packed_otherwise() {
+        let whole = packed(&[("a.csv", "x\n")]);
+        let mut encrypted = whole.clone();
+        let flags = in_directory(&whole, 8);
+        encrypted[flags] |= 1;
+        assert_eq!(refused(&encrypted).rule, "encrypted");
+        let mut method = whole.clone();
+        method[in_directory(&whole, 10)] = 12;
+        let found = refused(&method);
+        assert_eq!((found.rule, found.place.as_str()), ("unknown_packing", "skerrow.zip: a.csv"));
+    }
+
+    #[test]
+    fn cut_off_or_damaged() {
+        let whole = packed(&[("a.csv", &rows())]);
+        for length in [0, 4, whole.len() / 2, whole.len() - 1] {
+            assert_eq!(refused(&whole[..length]).rule, "cut_off", "{length}");
+        }
+        let mut checksum = whole.clone();
+        checksum[in_directory(&whole, 16)] ^= 1;
+        assert_eq!(broken("a", &first(&checksum).unwrap_err()).rule, "cut_off");
+        let mut short = whole.clone();
+        let packed_size = in_directory(&whole, 20);
+        let half = whole.len() as u32 / 2;
+        short[packed_size..packed_size + 4].copy_from_slice(&half.to_le_bytes());
+        assert_eq!(broken("a", &first(&short).unwrap_err()).rule, "cut_off");
+        let stored = packed_as(CompressionMethod::Stored, &[("a.csv", &rows())]);
+        let harmed = replaced(&stored, b"19999,", b"19998,");
+        assert_eq!(broken("a", &first(&harmed).unwrap_err()).rule, "cut_off");
+        for at in [whole.len() / 4, whole.len() / 2] {
+            let mut harmed = whole.clone();
+            harmed[at] ^= 0x55;
+            first(&harmed).unwrap_err();
+        }
+    }
+
+    #[test]
+    fn more_than_stated() {
+        let whole = packed(&[("a.csv", &rows())]);
+        let mut less = whole.clone();
+        let size = in_directory(&whole, 24);
+        less[size..size + 4].copy_from_slice(&100_u32.to_le_bytes());
+        assert_eq!(broken("a", &first(&less).unwrap_err()).rule, "too_much_inside");
+        let mut more = whole.clone();
+        more[size..size + 4].copy_from_slice(&u32::MAX.wrapping_sub(9).to_le_bytes());
+        assert_eq!(broken("a", &first(&more).unwrap_err()).rule, "cut_off");
+    }
+
+    #[test]
+    fn zeros_without_end_are_stopped() {
+        let zeros = "0".repeat(80 << 20);
+        let file = written(&packed(&[("a.csv", &zeros)]));
+        let zip = Zip::open(file.path(), "skerrow.zip").unwrap();
+        let error = io::copy(&mut zip.stream(&zip.entries()[0]).unwrap(), &mut io::sink()).unwrap_err();
+        assert_eq!(broken("a", &error).rule, "too_much_inside");
+        assert!(error.to_string().contains("250 times"));
+    }
+
+    proptest! {
+        #![proptest_config(ProptestConfig::with_cases(128))]
+
+        #[test]
+        fn arbitrary_bytes_do_not_panic(bytes in prop::collection::vec(any::<u8>(), 0..400)) {
+            drop(Zip::open(written(&bytes).path(), "a.zip"));
+        }
+
+        #[test]
+        fn changed_bytes_do_not_panic(changes in prop::collection::vec((0..400_usize, any::<u8>()), 1..6)) {
+            let mut bytes = packed(&[("a.csv", "id,x\n1,2\n"), ("b/", ""), ("b/c.csv", "3\n")]);
+            let length = bytes.len();
+            for (at, byte) in changes {
+                bytes[at % length] = byte;
+            }
+            let file = written(&bytes);
+            if let Ok(zip) = Zip::open(file.path(), "a.zip") {
+                for entry in zip.entries() {
+                    if let Ok(mut stream) = zip.stream(entry) {
+                        drop(io::copy(&mut stream, &mut io::sink()));
+                    }
+                }
+            }
+        }
+    }
+}
