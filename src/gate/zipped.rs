@@ -245,6 +245,15 @@ pub(super) mod tests {
     }
 
     #[test]
+    fn sizes_stated_behind_the_data() {
+        let mut writer = ZipWriter::new_stream(Vec::new());
+        writer.start_file("a.csv", SimpleFileOptions::default()).unwrap();
+        writer.write_all(rows().as_bytes()).unwrap();
+        let bytes = writer.finish().unwrap().into_inner();
+        assert_eq!(first(&bytes).unwrap(), rows().as_bytes());
+    }
+
+    #[test]
     fn told_by_the_first_bytes() {
         assert!(is_zip(written(&packed(&[])).path()));
         assert!(!is_zip(written(b"PK").path()));
