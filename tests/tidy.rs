@@ -13,11 +13,14 @@ const ROOMS: [&str; 13] = [
 ];
 
 /// Outside crates and the rooms that may name them.
-const OWNERS: [(&str, &[&str]); 17] = [
+const OWNERS: [(&str, &[&str]); 20] = [
     ("gdal", &["gate"]),
     ("gdal_sys", &["gate"]),
     ("csv", &["gate", "cli"]),
     ("sha2", &["gate"]),
+    ("flate2", &["gate"]),
+    ("roxmltree", &["gate"]),
+    ("zip", &["gate"]),
     ("geographiclib_rs", &["grid"]),
     ("kdtree", &["records"]),
     ("rstar", &["proxies"]),

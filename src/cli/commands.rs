@@ -64,7 +64,7 @@ fn tool() -> Tool {
 struct Nowhere;
 
 impl Sink for Nowhere {
-    fn dropped(&mut self, _: usize, _: u64, _: Rule, _: &Detail) -> Outcome<()> {
+    fn dropped(&mut self, _: &str, _: u64, _: Rule, _: &Detail) -> Outcome<()> {
         Ok(())
     }
 }
@@ -219,7 +219,7 @@ fn study(
     own_inputs(opened, target)?;
     let files = Files::new(&opened.folder);
     let mut staging = Staging::open(target)?;
-    let mut dropped = DroppedTable::create(&mut staging, &opened.plan.records.file_names())?;
+    let mut dropped = DroppedTable::create(&mut staging)?;
     let bars = Bars::new(voice.shows_progress());
     let needs = Needs { sources: &files, observer: &bars, memory: memory(common), kept };
     let mut notes = Notes::default();

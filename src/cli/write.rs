@@ -45,19 +45,15 @@ impl Run {
 /// `dropped.csv`, written as rows are dropped.
 pub struct DroppedTable {
     writer: csv::Writer<BufWriter<File>>,
-    files: Vec<String>,
     path: String,
 }
 
 impl DroppedTable {
-    pub fn create(staging: &mut Staging, files: &[String]) -> Outcome<Self> {
+    pub fn create(staging: &mut Staging) -> Outcome<Self> {
         let path = staging.path("dropped.csv");
         let file = File::create(&path).map_err(|e| unwritten(&path.display().to_string(), &e.to_string()))?;
-        let mut table = Self {
-            writer: csv::Writer::from_writer(BufWriter::new(file)),
-            files: files.to_vec(),
-            path: "dropped.csv".into(),
-        };
+        let mut table =
+            Self { writer: csv::Writer::from_writer(BufWriter::new(file)), path: "dropped.csv".into() };
         table.row(["file", "line", "rule", "detail"])?;
         Ok(table)
     }
@@ -77,14 +73,13 @@ fn unwritten(path: &str, why: &str) -> Diagnostic {
 }
 
 impl Sink for DroppedTable {
-    fn dropped(&mut self, file: usize, line: u64, rule: Rule, detail: &Detail) -> Outcome<()> {
+    fn dropped(&mut self, file: &str, line: u64, rule: Rule, detail: &Detail) -> Outcome<()> {
         let detail = detail.to_string();
         // a detail that would start a spreadsheet formula is kept from it; a negative number is none
         let risky = detail.starts_with(['=', '+', '@'])
             || detail.starts_with('-') && !detail[1..].starts_with(|c: char| c.is_ascii_digit());
         let detail = if risky { format!("'{detail}") } else { detail };
-        let file = self.files[file].clone();
-        self.row([&file, &line.to_string(), rule.word(), &detail])
+        self.row([file, &line.to_string(), rule.word(), &detail])
     }
 }
 

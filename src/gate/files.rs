@@ -116,8 +116,13 @@ impl Files {
         let mut names: Vec<String> = Vec::new();
         let opened = self.opened.lock().expect("no thread panics while it notes a file");
         for file in opened.iter() {
-            names.push(file.clone());
             let path = Path::new(file);
+            let whole = self.folder.join(file);
+            if whole.is_dir() {
+                names.extend(inside(&whole).iter().map(|n| path.join(n).display().to_string()));
+                continue;
+            }
+            names.push(file.clone());
             if path.extension().is_some_and(|e| e.eq_ignore_ascii_case("shp")) {
                 names.extend(
                     ["dbf", "shx", "prj", "cpg"].map(|e| path.with_extension(e).display().to_string()),
@@ -126,6 +131,15 @@ impl Files {
         }
         names.iter().filter_map(|n| digest(&self.folder.join(n), n)).collect()
     }
+}
+
+/// The files at the top of a folder, by name.
+fn inside(folder: &Path) -> Vec<String> {
+    let entries = std::fs::read_dir(folder).into_iter().flatten().flatten();
+    let files = entries.filter(|e| e.path().is_file());
+    let mut names: Vec<String> = files.map(|e| e.file_name().to_string_lossy().into_owned()).collect();
+    names.sort();
+    names
 }
 
 /// A virtual raster or vector that refers to a network is refused.
@@ -175,10 +189,16 @@ impl Sources for Files {
         (screener, collector): (&Screener, &mut Collector),
         observer: &dyn Observer,
     ) -> Outcome<()> {
-        for (index, (file, _)) in plan.files().enumerate() {
-            record_files::read(self, (file, index), plan, (screener, &mut *collector), observer)?;
+        let mut problems = Vec::new();
+        for (number, source) in plan.sources.iter().enumerate() {
+            for file in &source.files {
+                let to = (screener, &mut *collector);
+                if let Err(p) = record_files::read(self, (file, number), plan, to, observer) {
+                    problems.extend(p.0);
+                }
+            }
         }
-        Ok(())
+        if problems.is_empty() { Ok(()) } else { Err(crate::diag::Problems(problems)) }
     }
 
     fn project(&self, from: &str, grid: &Grid, x: &mut [f64], y: &mut [f64]) -> Outcome<()> {

@@ -1,7 +1,7 @@
 //! Where the fields of a record are found among the columns of a file.
 
 use crate::diag::{Diagnostic, Outcome};
-use crate::records::{Count, Fields, Place, RecordsPlan, SourcePlan};
+use crate::records::{Count, Fields, Match, Place, RecordsPlan, SourcePlan};
 
 /// Where a field's text comes from.
 #[derive(Debug, Clone, Default, PartialEq)]
@@ -49,17 +49,6 @@ pub(super) struct Point<'a> {
     pub(super) degrees: bool,
 }
 
-/// How a column was found.
-#[derive(Debug, Clone, PartialEq, Eq)]
-pub struct Match {
-    /// What is looked for: a key of the plan, or a term read wherever it stands.
-    pub role: String,
-    /// The column.
-    pub column: String,
-    /// Whether its name is written otherwise than looked for.
-    pub differs: bool,
-}
-
 /// Where each field of a row is found; `None` where the file has no such column.
 #[derive(Default)]
 pub(super) struct Layout {
@@ -91,7 +80,7 @@ impl Search<'_> {
         let at = position(self.columns, name, self.short)?;
         let found = &self.columns[at];
         let column = found.name.clone();
-        self.matches.push(Match { role: role.to_owned(), differs: column != name, column });
+        self.matches.push(Match { role: role.to_owned(), wanted: name.to_owned(), column });
         Some(found.slot.clone())
     }
 
@@ -158,6 +147,35 @@ impl Layout {
         }
         layout.matches = s.matches;
         Ok(layout)
+    }
+
+    /// The columns of the file that are read, in their order.
+    pub(super) fn columns(&self) -> Vec<usize> {
+        let all: std::collections::BTreeSet<usize> = self.slots().filter_map(|s| s.own).collect();
+        all.into_iter().collect()
+    }
+
+    /// The fields that are read of the rows that the file's rows belong to.
+    pub(super) fn parents(&self) -> Vec<usize> {
+        let all: std::collections::BTreeSet<usize> = self.slots().filter_map(|s| s.parent).collect();
+        all.into_iter().collect()
+    }
+
+    fn slots(&self) -> impl Iterator<Item = &Slot> {
+        let single = [
+            &self.date,
+            &self.observer,
+            &self.dataset,
+            &self.uncertainty,
+            &self.status,
+            &self.individuals,
+            &self.datum,
+        ];
+        let place = self.place.iter().flat_map(|(x, y)| [x, y]);
+        place
+            .chain(single.into_iter().flatten())
+            .chain(self.year_month_day.iter().flatten())
+            .chain(&self.filters)
     }
 
     /// Hands the fields of a row to `each`.

@@ -2,7 +2,10 @@
 //!
 //! The only room that knows GDAL, files and reference systems. It makes no scientific choice.
 
+mod archive;
+mod archived;
 mod cells;
+mod container;
 mod crs;
 mod digest;
 mod features;
@@ -11,6 +14,7 @@ mod geotiff;
 mod grid_in;
 mod layout;
 mod overlay;
+mod parquet_in;
 mod points;
 mod record_files;
 mod remote;
@@ -21,7 +25,9 @@ mod sources;
 mod staging;
 mod table;
 mod text;
+mod unpack;
 mod values;
+mod zipped;
 
 pub use digest::{InputFile, digest};
 pub use files::{Files, libraries};

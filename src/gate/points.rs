@@ -26,18 +26,20 @@ impl Texts for Attributes {
 /// Hands the features of a vector file to the collector.
 pub(super) fn read(
     files: &Files,
-    (file, index): (&str, usize),
+    (file, number): (&str, usize),
     plan: &RecordsPlan,
     (screener, collector): (&Screener, &mut Collector),
     observer: &dyn Observer,
 ) -> Outcome<()> {
-    let (_, source) = plan.files().nth(index).expect("a file of the plan");
+    let source = &plan.sources[number];
+    let index = collector.open(file);
     let dataset = files.vector(file)?;
     let mut layer = open_layer(&dataset, file, source.table.as_deref())?;
     let names: Vec<String> = layer.defn().fields().map(|f| f.name()).collect();
     let geometries = layer.defn().geom_fields().next().is_some()
         && !source.columns.stated.iter().any(|s| s == "longitude" || s == "latitude");
     let layout = Layout::find(&Named::in_order(&names), (plan, source), file, geometries)?;
+    collector.found(index, &layout.matches);
     let own = if geometries {
         let srs = layer.spatial_ref().ok_or_else(|| no_crs(file))?;
         Some(crs::describe(&srs).ok_or_else(|| no_crs(file))?)
@@ -45,7 +47,7 @@ pub(super) fn read(
         None
     };
     observer.begin(&format!("read {file}"), layer.try_feature_count());
-    let mut batch = screener.batch(index);
+    let mut batch = screener.batch(index, number);
     for feature in layer.features() {
         let texts = Attributes((0..names.len()).map(|i| text(&feature, i)).collect());
         let line = feature.fid().unwrap_or(0);
@@ -60,7 +62,7 @@ pub(super) fn read(
             screener.push(&mut batch, &Row { line, content: Content::Fields(fields) });
         });
         if batch.waiting() >= BATCH {
-            collector.take(screener, std::mem::replace(&mut batch, screener.batch(index)))?;
+            collector.take(screener, std::mem::replace(&mut batch, screener.batch(index, number)))?;
         }
         observer.advance(1);
     }

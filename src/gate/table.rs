@@ -10,8 +10,14 @@ use crate::records::{Batch, Collector, Content, RecordsPlan, Row, Screener};
 use super::layout::{Layout, Named, Texts};
 use super::text::{Head, Rows, TextSource, Work, scan};
 
-/// Whether a file is read as delimited text: by its ending, or because it is text that no vector
-/// driver claims.
+/// Whether a file is gzipped.
+pub(super) fn is_gzip(path: &Path) -> bool {
+    let mut head = [0; 2];
+    File::open(path).and_then(|mut f| f.read_exact(&mut head)).is_ok() && head == [0x1f, 0x8b]
+}
+
+/// Whether a file is read as delimited text, gzipped or not: by its ending, or because it is text that no
+/// vector driver claims.
 pub(super) fn is_text(path: &Path) -> bool {
     let ending = path.extension().map(|e| e.to_string_lossy().to_lowercase()).unwrap_or_default();
     match ending.as_str() {
@@ -21,7 +27,7 @@ pub(super) fn is_text(path: &Path) -> bool {
         _ => {
             let mut head = [0; 4096];
             let n = File::open(path).and_then(|mut f| f.read(&mut head)).unwrap_or(0);
-            n > 0 && !head[..n].contains(&0)
+            n > 0 && (!head[..n].contains(&0) || head.starts_with(&[0x1f, 0x8b]))
         }
     }
 }
@@ -36,14 +42,15 @@ impl Texts for Rows<'_> {
 struct Screening<'a> {
     screener: &'a Screener<'a>,
     layout: &'a Layout,
-    file: usize,
+    /// Number of the file among those read, and of its source in the plan.
+    at: (usize, usize),
 }
 
 impl Work for Screening<'_> {
     type Part = Batch;
 
     fn begin(&self) -> Batch {
-        self.screener.batch(self.file)
+        self.screener.batch(self.at.0, self.at.1)
     }
 
     fn row(&self, batch: &mut Batch, line: u64, rows: &Rows) {
@@ -64,16 +71,18 @@ impl Work for Screening<'_> {
 /// Hands the records of a text file to the collector.
 pub(super) fn read(
     text: &TextSource,
-    file: usize,
+    source: usize,
     plan: &RecordsPlan,
     (screener, collector): (&Screener, &mut Collector),
     observer: &dyn Observer,
 ) -> Outcome<()> {
     let head = Head::open(text)?;
-    let (_, source) = plan.files().nth(file).expect("a file of the plan");
-    let layout = Layout::find(&Named::in_order(&head.names), (plan, source), text.name, false)?;
-    let work = Screening { screener, layout: &layout, file };
+    let named = Named::in_order(&head.names);
+    let layout = Layout::find(&named, (plan, &plan.sources[source]), text.name, false)?;
+    let file = collector.open(text.name);
+    collector.found(file, &layout.matches);
+    let work = Screening { screener, layout: &layout, at: (file, source) };
     let remark = scan(text, head, &work, &mut |parts| collector.absorb(parts), observer)?;
-    remark.into_iter().for_each(|r| collector.remark(r));
+    collector.remarks(remark);
     Ok(())
 }

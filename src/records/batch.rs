@@ -151,15 +151,11 @@ impl<'a> Screener<'a> {
         }
     }
 
-    /// An empty batch for rows of a file, by its number in the plan.
-    pub fn batch(&self, file: usize) -> Batch {
-        let ends = self.plan.sources.iter().scan(0, |n, s| {
-            *n += s.files.len();
-            Some(*n)
-        });
+    /// An empty batch for rows of a file, by its number among those read and that of its source.
+    pub fn batch(&self, file: usize, source: usize) -> Batch {
         Batch {
             file: file as u32,
-            source: ends.take_while(|end| *end <= file).count(),
+            source,
             ledger: Ledger::default(),
             dropped: Vec::new(),
             observers: Names::default(),

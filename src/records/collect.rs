@@ -21,7 +21,7 @@ pub trait Sink {
     ///
     /// # Errors
     /// When it cannot be noted.
-    fn dropped(&mut self, file: usize, line: u64, rule: Rule, detail: &Detail) -> Outcome<()>;
+    fn dropped(&mut self, file: &str, line: u64, rule: Rule, detail: &Detail) -> Outcome<()>;
 }
 
 /// A kept record, for those who want to check.
@@ -43,6 +43,9 @@ pub struct Collector<'a> {
     region: &'a Region,
     sink: &'a mut dyn Sink,
     keep: bool,
+    /// Names of the files read.
+    files: Vec<String>,
+    matches: Vec<(u32, Vec<Match>)>,
     ledger: Ledger,
     rows: u64,
     observers: Names,
@@ -54,8 +57,23 @@ pub struct Collector<'a> {
     remarks: Vec<Diagnostic>,
 }
 
+/// How a column was found.
+#[derive(Debug, Clone, PartialEq, Eq)]
+pub struct Match {
+    /// What it serves as: a key of the plan, or a term that is read wherever it stands.
+    pub role: String,
+    /// The name looked for.
+    pub wanted: String,
+    /// The name found.
+    pub column: String,
+}
+
 /// What was gathered.
 pub struct Gathering {
+    /// Names of the files read, parts of folders and archives one by one.
+    pub files: Vec<String>,
+    /// How the columns of each were found.
+    pub matches: Vec<(u32, Vec<Match>)>,
     /// The records.
     pub records: Records,
     /// Records kept, where asked for.
@@ -72,6 +90,8 @@ impl<'a> Collector<'a> {
             region,
             sink,
             keep,
+            files: Vec::new(),
+            matches: Vec::new(),
             ledger: Ledger::default(),
             rows: 0,
             observers: Names::default(),
@@ -84,6 +104,17 @@ impl<'a> Collector<'a> {
         }
     }
 
+    /// Notes that a file is read now; its number.
+    pub fn open(&mut self, name: &str) -> usize {
+        self.files.push(name.to_owned());
+        self.files.len() - 1
+    }
+
+    /// Notes how the columns of a file were found.
+    pub fn found(&mut self, file: usize, matches: &[Match]) {
+        self.matches.push((file as u32, matches.to_vec()));
+    }
+
     /// Takes batches that are settled, each with the line from which its rows are counted.
     ///
     /// # Errors
@@ -92,7 +123,7 @@ impl<'a> Collector<'a> {
         let mut numbered = Vec::with_capacity(batches.len());
         for (batch, line) in batches {
             for d in &batch.dropped {
-                self.sink.dropped(batch.file as usize, d.line + line, d.rule, &d.detail)?;
+                self.sink.dropped(&self.files[batch.file as usize], d.line + line, d.rule, &d.detail)?;
             }
             self.ledger.join(&batch.ledger);
             self.rows += batch.dates.iter().sum::<u64>();
@@ -116,9 +147,9 @@ impl<'a> Collector<'a> {
         self.absorb(vec![(batch, 0)])
     }
 
-    /// Notes something about a file that deserves attention.
-    pub fn remark(&mut self, remark: Diagnostic) {
-        self.remarks.push(remark);
+    /// Notes what about a file deserves attention.
+    pub fn remarks(&mut self, remarks: impl IntoIterator<Item = Diagnostic>) {
+        self.remarks.extend(remarks);
     }
 
     /// Ends the gathering.
@@ -133,7 +164,7 @@ impl<'a> Collector<'a> {
         if self.ledger.kept() == 0 {
             let mut problems = self.remarks;
             let extent = self.region.grid().extent();
-            problems.push(smells::nothing_left(self.plan, &self.ledger, &self.signs, extent));
+            problems.push(smells::nothing_left(&self.files, &self.ledger, &self.signs, extent));
             return Err(crate::diag::Problems(problems));
         }
         let parts = std::mem::take(&mut self.parts);
@@ -146,11 +177,12 @@ impl<'a> Collector<'a> {
             .collect();
         let piles = self.piles.largest();
         let mut smells = std::mem::take(&mut self.remarks);
-        let (signs, plan, region) = (self.signs.clone(), self.plan, self.region);
+        let (signs, region) = (self.signs.clone(), self.region);
+        let (files, matches) = (std::mem::take(&mut self.files), std::mem::take(&mut self.matches));
         let dataset_names = self.datasets.in_order();
         let records = self.records(&sorted, piles)?;
-        smells.extend(smells::all(plan, region, &signs, &records, &dataset_names));
-        Ok(Gathering { records, kept, smells })
+        smells.extend(smells::all(&files, region, &signs, &records, &dataset_names));
+        Ok(Gathering { files, matches, records, kept, smells })
     }
 
     fn records(self, sorted: &Sorted, piles: Vec<super::piles::Pile>) -> Outcome<Records> {

@@ -26,7 +26,7 @@ mod visits;
 pub use batch::{Batch, Detail, Projection, Screener};
 pub use blocks::Blocks;
 pub use caps::{Capped, Groups};
-pub use collect::{Collector, Gathering, Kept, Sink};
+pub use collect::{Collector, Gathering, Kept, Match, Sink};
 pub use dates::{DateRange, Precision};
 pub use holdout::{HoldoutPlan, Split};
 pub use ledger::{Ledger, Rule};

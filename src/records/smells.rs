@@ -4,7 +4,6 @@ use crate::diag::Diagnostic;
 use crate::grid::Region;
 
 use super::ledger::Ledger;
-use super::settings::RecordsPlan;
 use super::signs::{DEGREES, Seen, Sign, Signs, Turn, UNITS};
 use super::units::{Records, median_uncertainty};
 
@@ -21,13 +20,13 @@ const DEGREE: f64 = 111_195.0;
 
 /// Everything that smells.
 pub(super) fn all(
-    plan: &RecordsPlan,
+    files: &[String],
     region: &Region,
     signs: &Signs,
     records: &Records,
     datasets: &[String],
 ) -> Vec<Diagnostic> {
-    let say = Says { files: plan.file_names() };
+    let say = Says { files: files.to_vec() };
     let mut found = say.misplaced(signs, &records.ledger);
     found.extend(say.coarse(region, signs));
     found.extend(say.piles(records));
@@ -54,12 +53,12 @@ pub(super) fn lattices(signs: &Signs) -> Vec<(&'static str, f64)> {
 
 /// The error of a study without records.
 pub(super) fn nothing_left(
-    plan: &RecordsPlan,
+    files: &[String],
     ledger: &Ledger,
     signs: &Signs,
     [gw, gs, ge, gn]: [f64; 4],
 ) -> Diagnostic {
-    let say = Says { files: plan.file_names() };
+    let say = Says { files: files.to_vec() };
     let place = say.files.join(", ");
     if ledger.read() == 0 {
         return Diagnostic::input("no_rows", place, "the file holds a header and no rows")

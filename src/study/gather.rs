@@ -9,7 +9,7 @@ use crate::grid::{Grid, Region};
 use crate::output::Stage;
 use crate::plan::{GridPlan, StudyPlan};
 use crate::proxies::{Layer, LayerPlan, Measure, ProxyStack, distance};
-use crate::records::{Collector, Kept, Projection, Records, RecordsPlan, Screener, Sink};
+use crate::records::{Collector, Gathering, Kept, Match, Projection, Records, RecordsPlan, Screener, Sink};
 use crate::units::Bytes;
 
 use super::cost::{Cost, estimate, too_large};
@@ -62,6 +62,10 @@ pub struct Gathered {
     pub records: Records,
     /// Records kept, where asked for.
     pub kept: Vec<Kept>,
+    /// Names of the files of records read.
+    pub files: Vec<String>,
+    /// How the columns of each were found.
+    pub matches: Vec<(u32, Vec<Match>)>,
 }
 
 /// Reads everything.
@@ -88,7 +92,9 @@ pub fn gather(plan: &StudyPlan, needs: &Needs, sink: &mut dyn Sink, notes: &mut 
     let read = notes.stage("records", |notes| records(plan, needs, &region, sink, notes));
     notes.warnings.0.extend(needs.sources.remarks());
     match read {
-        Ok((records, kept)) if problems.is_empty() => Ok(Gathered { region, layers, records, kept }),
+        Ok(Gathering { records, kept, files, matches, .. }) if problems.is_empty() => {
+            Ok(Gathered { region, layers, records, kept, files, matches })
+        }
         Ok(_) => Err(Problems(problems)),
         Err(p) => {
             problems.extend(p.0);
@@ -220,13 +226,13 @@ fn records(
     region: &Arc<Region>,
     sink: &mut dyn Sink,
     notes: &mut Notes,
-) -> Outcome<(Records, Vec<Kept>)> {
+) -> Outcome<Gathering> {
     let asked = &plan.records;
     let ground = OnGrid::new(asked, needs.sources, region)?;
     let screener = Screener::new(asked, Arc::clone(region), &ground);
     let mut collector = Collector::new(asked, region, sink, needs.kept);
     needs.sources.records(asked, (&screener, &mut collector), needs.observer)?;
-    let gathering = collector.finish()?;
-    notes.warnings.0.extend(gathering.smells);
-    Ok((gathering.records, gathering.kept))
+    let mut gathering = collector.finish()?;
+    notes.warnings.0.append(&mut gathering.smells);
+    Ok(gathering)
 }

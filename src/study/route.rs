@@ -32,7 +32,7 @@ pub fn run(
     sink: &mut dyn Sink,
     notes: &mut Notes,
 ) -> Outcome<Finding> {
-    let Gathered { region, layers, records, kept } = gather(plan, needs, sink, notes)?;
+    let Gathered { region, layers, records, kept, files, .. } = gather(plan, needs, sink, notes)?;
     let blocks = lay_blocks(plan, &region)?;
     let folds = Folds::deal(&records, &blocks, plan.holdout.split, plan.holdout.folds, plan.seed)?;
     let floor = plan.surface.floor.get();
@@ -61,7 +61,7 @@ pub fn run(
         region,
         records,
         kept,
-        files: plan.records.file_names(),
+        files,
         layers,
         holdout: plan.holdout,
         blocks,

@@ -16,6 +16,20 @@ pub(in crate::gate) enum Encoding {
     Latin1,
 }
 
+impl Encoding {
+    /// An encoding by any of its usual names.
+    pub(in crate::gate) fn named(name: &str) -> Option<Self> {
+        let plain: String = name.chars().filter(char::is_ascii_alphanumeric).collect();
+        match plain.to_ascii_lowercase().as_str() {
+            "" | "utf8" | "ascii" | "usascii" | "ansix341968" => Some(Self::Utf8),
+            "iso88591" | "latin1" | "l1" | "isolatin1" | "windows1252" | "cp1252" | "win1252" => {
+                Some(Self::Latin1)
+            }
+            _ => None,
+        }
+    }
+}
+
 /// What the lines of a text that are not plain ASCII look like.
 #[derive(Debug, Default, Clone, Copy, PartialEq, Eq)]
 pub(in crate::gate) struct Census {
@@ -84,5 +98,16 @@ mod tests {
         assert_eq!(verdict(b"M\xc3\xbcller\nJos\xe9\n"), Encoding::Utf8);
         assert_eq!(verdict(b"\x81\x8d\n"), Encoding::Utf8);
         assert_eq!(decode(b"M\xfcller"), "M\u{fc}ller");
+    }
+
+    #[test]
+    fn usual_names() {
+        for name in ["UTF-8", "utf8", "US-ASCII"] {
+            assert_eq!(Encoding::named(name), Some(Encoding::Utf8), "{name}");
+        }
+        for name in ["ISO-8859-1", "iso_8859_1", "Latin-1", "windows-1252", "Cp1252"] {
+            assert_eq!(Encoding::named(name), Some(Encoding::Latin1), "{name}");
+        }
+        assert_eq!((Encoding::named("UTF-16"), Encoding::named("ISO-8859-15")), (None, None));
     }
 }

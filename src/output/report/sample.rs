@@ -69,7 +69,9 @@ fn records(region: &Arc<Region>, layers: &ProxyStack, wanted: usize) -> Records 
         let here = 0.06 + 0.94 * float::exp(-road[cell] / 3500.0);
         if stream.unit() < here {
             let (again, outing) = (1 + stream.below(3), (units.len() / 3) as u32);
-            units.extend((0..again).map(|_| Unit {
+            let next = units.len() as u32;
+            units.extend((0..again).map(|k| Unit {
+                number: next + k as u32,
                 cell: cell as u32,
                 weight: 1.0,
                 outing,
