@@ -13,6 +13,7 @@ mod screen;
 mod settings;
 mod snap;
 mod split;
+mod thin;
 mod units;
 mod visits;
 
@@ -24,4 +25,5 @@ pub use ledger::{Ledger, Rule};
 pub use row::{Content, Fields, Place, Row};
 pub use settings::{ColumnValues, Columns, Count, Quotes, RecordsPlan};
 pub use split::{Folds, HeldOut, Training};
+pub use thin::{Ground, Thinned, thin_by_distance, thin_by_square};
 pub use units::{Records, Unit, VisitFacts, median_uncertainty};
