@@ -126,7 +126,8 @@ mod tests {
     #[test]
     fn chords_settle_only_what_geodesics_say() {
         let mut stream = crate::maths::random::Stream::new(crate::units::Seed(5), "test", 0);
-        let mut place = || (stream.unit() * 360.0 - 180.0, float::asin(stream.unit() * 2.0 - 1.0).to_degrees());
+        let mut place =
+            || (stream.unit() * 360.0 - 180.0, float::asin(stream.unit() * 2.0 - 1.0).to_degrees());
         for i in 0..6000 {
             let (p, mut q) = (place(), place());
             let spread = float::pow(10.0, -((i % 7) as f64));

@@ -21,7 +21,8 @@ const TRIES: usize = 4;
 const PLANE: Ground = Ground::Plane { metres_per_unit: 1.0 };
 
 fn main() {
-    let mut lines = vec![format!("{PLACES} places, {TRIES} tries: seconds, kept; one pass: seconds, kept; ratios")];
+    let mut lines =
+        vec![format!("{PLACES} places, {TRIES} tries: seconds, kept; one pass: seconds, kept; ratios")];
     let sets = [
         ("uniform", uniform(), PLANE, 10_000.0),
         ("clusters of 10 km", clusters(10_000.0), PLANE, 10_000.0),
@@ -30,7 +31,12 @@ fn main() {
         ("clusters, 1 km", clusters(10_000.0), PLANE, 1_000.0),
         ("clusters, 10 m", clusters(10_000.0), PLANE, 10.0),
         ("clusters, globe, 60 km", on_globe(clusters(10_000.0)), Ground::Globe, 60_000.0),
-        ("within 12 km", clusters(10_000.0).iter().map(|p| (p.0 / 120.0, p.1 / 120.0)).collect(), PLANE, 10_000.0),
+        (
+            "within 12 km",
+            clusters(10_000.0).iter().map(|p| (p.0 / 120.0, p.1 / 120.0)).collect(),
+            PLANE,
+            10_000.0,
+        ),
         ("all the same", vec![(5.0, 5.0); PLACES], PLANE, 10_000.0),
     ];
     let only = std::env::args().nth(1).filter(|a| !a.starts_with('-'));

@@ -91,8 +91,7 @@ impl Cells {
 /// The places in the order of their cubes, and where each cube begins.
 fn sorted(space: &Space, distance: f64) -> (Vec<u32>, Vec<u32>) {
     let side = (distance / 2.0).max(extent(&space.points) * 1e-9).max(f64::MIN_POSITIVE);
-    let keys: Vec<[i64; 3]> =
-        space.points.par_iter().map(|p| p.map(|c| (c / side).floor() as i64)).collect();
+    let keys: Vec<[i64; 3]> = space.points.par_iter().map(|p| p.map(|c| (c / side).floor() as i64)).collect();
     let mut order: Vec<u32> = (0..keys.len() as u32).collect();
     order.par_sort_unstable_by_key(|&i| (keys[i as usize], i));
     let mut starts: Vec<u32> = (0..order.len())

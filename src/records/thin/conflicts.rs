@@ -2,8 +2,8 @@
 
 use crate::maths::random::Stream;
 
-use super::cells::Cells;
-use super::ground::Space;
+use super::cells::{Cells, corners};
+use super::ground::{Space, square_between};
 
 /// Pairs of places a component may have for its clashes to be stored.
 const STORED: u64 = 8_000_000;
@@ -80,6 +80,12 @@ impl<'a> Conflicts<'a> {
         self.space.clash((self.first + a) as usize, (self.first + b) as usize)
     }
 
+    /// Whether places lie so close together that all of them surely clash.
+    pub fn huddled(&self, places: &[u32]) -> bool {
+        let (low, high) = corners(places.iter().map(|&p| self.point(p)));
+        square_between(&low, &high) < self.space.settling.0
+    }
+
     /// The point of a place.
     pub fn point(&self, place: u32) -> &[f64; 3] {
         &self.space.points[(self.first + place) as usize]
@@ -94,7 +100,8 @@ impl<'a> Conflicts<'a> {
         let home = self.cells.cell_of[own as usize];
         (0..8).find_map(|_| {
             let cell = self.cells.any_around(home, stream);
-            let other = self.cells.starts[cell as usize] + stream.below(self.cells.size(cell) as usize) as u32;
+            let other =
+                self.cells.starts[cell as usize] + stream.below(self.cells.size(cell) as usize) as u32;
             (other != own && self.space.clash(own as usize, other as usize)).then_some(other - self.first)
         })
     }

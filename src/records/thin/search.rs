@@ -19,6 +19,9 @@ const OUT: u32 = u32::MAX;
 /// Places that clash with one kept place alone beyond which not every pair of them is tried.
 const ALL_PAIRS: usize = 40;
 
+/// What a change costs beside the places looked at.
+const SHAKE: u64 = 50;
+
 /// A choice of places, with what is needed to change it quickly.
 pub struct Search<'a> {
     conflicts: &'a Conflicts<'a>,
@@ -32,6 +35,7 @@ pub struct Search<'a> {
     joined: Vec<u32>,
     free: Vec<u32>,
     examine: Vec<u32>,
+    queued: Vec<bool>,
     journal: Vec<u32>,
     looked: u64,
 }
@@ -49,6 +53,7 @@ impl<'a> Search<'a> {
             joined: vec![0; len],
             free: Vec::new(),
             examine: Vec::new(),
+            queued: vec![false; len],
             journal: Vec::new(),
             looked: 0,
         };
@@ -60,7 +65,7 @@ impl<'a> Search<'a> {
     /// `effort` places have been looked at, or no more can be kept.
     pub fn improve(&mut self, patience: usize, effort: u64) {
         self.looked = 0;
-        self.examine = self.kept.clone();
+        // every kept place stands in line to be examined
         self.stream.shuffle(&mut self.examine);
         self.settle(effort);
         let bound = self.conflicts.bound();
@@ -68,6 +73,7 @@ impl<'a> Search<'a> {
         while self.kept.len() < bound && self.looked < effort && idle < patience * (self.kept.len() + 4) {
             let before = self.kept.len();
             self.journal.clear();
+            self.looked += SHAKE;
             self.shake();
             self.settle(u64::MAX);
             idle = if self.kept.len() > before { 0 } else { idle + 1 };
@@ -120,7 +126,9 @@ impl<'a> Search<'a> {
         self.slot[place as usize] = self.kept.len() as u32;
         self.kept.push(place);
         self.journal.push(place);
-        self.examine.push(place);
+        if !std::mem::replace(&mut self.queued[place as usize], true) {
+            self.examine.push(place);
+        }
         let (against, joined) = (&mut self.against, &mut self.joined);
         self.looked += self.conflicts.each(place, |other| {
             against[other as usize] += 1;
@@ -136,8 +144,8 @@ impl<'a> Search<'a> {
             self.slot[moved as usize] = slot as u32;
         }
         self.journal.push(place);
-        let (against, joined, free, examine) =
-            (&mut self.against, &mut self.joined, &mut self.free, &mut self.examine);
+        let (against, joined, queued) = (&mut self.against, &mut self.joined, &mut self.queued);
+        let (free, examine) = (&mut self.free, &mut self.examine);
         free.push(place);
         self.looked += self.conflicts.each(place, |other| {
             let o = other as usize;
@@ -145,7 +153,11 @@ impl<'a> Search<'a> {
             joined[o] ^= place;
             match against[o] {
                 0 => free.push(other),
-                1 if examine.last() != Some(&joined[o]) => examine.push(joined[o]),
+                1 => {
+                    if !std::mem::replace(&mut queued[joined[o] as usize], true) {
+                        examine.push(joined[o]);
+                    }
+                }
                 _ => {}
             }
         }) as u64;
@@ -154,15 +166,26 @@ impl<'a> Search<'a> {
     /// Lets in what is free, then lets single places give way to two, until neither is possible.
     fn settle(&mut self, effort: u64) {
         loop {
-            while !self.free.is_empty() {
-                let drawn = self.stream.below(self.free.len());
-                let place = self.free.swap_remove(drawn);
-                self.enter(place);
-            }
+            self.fill();
             let Some(place) = self.examine.pop() else { return };
+            self.queued[place as usize] = false;
             if self.slot[place as usize] != OUT && self.looked < effort {
                 self.give_way(place);
             }
+        }
+    }
+
+    /// Lets free places in, one drawn after another, until none is free.
+    fn fill(&mut self) {
+        loop {
+            let (slot, against) = (&self.slot, &self.against);
+            self.looked += self.free.len() as u64;
+            self.free.retain(|&p| against[p as usize] == 0 && slot[p as usize] == OUT);
+            if self.free.is_empty() {
+                return;
+            }
+            let drawn = self.stream.below(self.free.len());
+            self.enter(self.free[drawn]);
         }
     }
 
@@ -185,10 +208,14 @@ impl<'a> Search<'a> {
     /// Two of the places that do not clash.
     fn apart(&mut self, places: &[u32]) -> Option<(u32, u32)> {
         let conflicts = self.conflicts;
+        if places.len() < 2 || conflicts.huddled(places) {
+            return None;
+        }
         if places.len() > ALL_PAIRS {
             return self.far_apart(places);
         }
-        let turn = if places.is_empty() { 0 } else { self.stream.below(places.len()) };
+        self.looked += (places.len() * places.len() / 4) as u64;
+        let turn = self.stream.below(places.len());
         let (later, earlier) = places.split_at(turn);
         let order = || earlier.iter().chain(later).copied();
         order().enumerate().find_map(|(i, one)| {
@@ -219,11 +246,12 @@ impl<'a> Search<'a> {
 
     /// Takes the changes since the journal was cleared back, last first.
     fn undo(&mut self) {
-        for place in std::mem::take(&mut self.journal).into_iter().rev() {
+        for at in (0..self.journal.len()).rev() {
+            let place = self.journal[at];
             if self.slot[place as usize] == OUT { self.enter(place) } else { self.leave(place) }
         }
         self.free.clear();
-        self.examine.clear();
-        self.journal.clear();
+        let queued = &mut self.queued;
+        self.examine.drain(..).for_each(|p| queued[p as usize] = false);
     }
 }

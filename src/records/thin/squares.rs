@@ -137,3 +137,113 @@ impl Partition {
         (row as i64, (turn * columns).floor().min(columns - 1.0) as i64)
     }
 }
+
+#[cfg(test)]
+mod tests {
+    use super::*;
+    use std::collections::BTreeMap;
+
+    fn metres(value: f64) -> Metres {
+        Metres::new(value).unwrap()
+    }
+
+    fn anywhere(stream: &mut Stream) -> (f64, f64) {
+        (stream.unit() * 360.0 - 180.0, float::asin(stream.unit() * 2.0 - 1.0).to_degrees())
+    }
+
+    #[test]
+    fn cells_of_the_globe_have_equal_area() {
+        for side in [3e7, 1.6e7, 1.3e7, 9e6, 2e6, 1e6] {
+            let partition = Partition::new(side);
+            let mut total = 0.0;
+            for row in 0..=partition.rows as usize + 1 {
+                let columns = partition.north_of(row as f64 + 1.0) - partition.north_of(row as f64);
+                assert!(columns >= 1.0 || partition.cells == 1.0, "{side} {row}");
+                total += columns;
+            }
+            assert_eq!(total, partition.cells);
+        }
+        // places uniform by area (on the ellipsoid, by rejection): every cell is equally likely
+        let partition = Partition::new(3e6);
+        let mut stream = Stream::new(Seed(2), "test", 0);
+        let mut counts: BTreeMap<(i64, i64), f64> = BTreeMap::new();
+        let mut drawn = 0.0;
+        while drawn < 57_000.0 {
+            let (x, y) = (stream.unit() * 360.0 - 180.0, stream.unit() * 180.0 - 90.0);
+            if stream.unit() < zone_area(y - 5e-4, y + 5e-4, 0.001) / zone_area(-5e-4, 5e-4, 0.001) / 1.02 {
+                *counts.entry(partition.holding((x, y))).or_default() += 1.0;
+                drawn += 1.0;
+            }
+        }
+        assert_eq!(counts.len() as f64, partition.cells);
+        let mean = drawn / partition.cells;
+        let chi: f64 = counts.values().map(|n| (n - mean) * (n - mean) / mean).sum();
+        // about normal with mean k and variance 2k; 99.9 % quantile
+        let freedom = partition.cells - 1.0;
+        assert!(chi < freedom + 3.1 * (2.0 * freedom).sqrt(), "{chi} of {freedom}");
+    }
+
+    #[test]
+    fn the_date_line_and_the_poles_fall_into_cells() {
+        for side in [10.0, 1e3, 1e5, 1e6] {
+            let partition = Partition::new(side);
+            assert_eq!(partition.holding((180.0, 12.0)), partition.holding((-180.0, 12.0)));
+            assert_eq!(partition.holding((33.0, 90.0)), (0, 0));
+            assert_eq!(partition.holding((33.0, -90.0)), (partition.rows as i64 + 1, 0));
+            assert!(partition.holding((179.999_999, 0.0)).1 > partition.holding((179.0, 0.0)).1 - 1);
+        }
+    }
+
+    #[test]
+    fn cells_are_roughly_square() {
+        let (partition, mut stream) = (Partition::new(50e3), Stream::new(Seed(2), "test", 0));
+        for _ in 0..2000 {
+            let (x, y) = anywhere(&mut stream);
+            let home = partition.holding((x, y));
+            // a step of one side east or north leads at most two cells on
+            let north = partition.holding((x, (y + 50.0 / 111.0).min(90.0)));
+            assert!((0..=2).contains(&(home.0 - north.0)), "{x} {y}");
+        }
+    }
+
+    #[test]
+    fn keeps_at_most_so_many_per_square_drawn_by_the_seed() {
+        let mut stream = Stream::new(Seed(6), "test", 0);
+        let globe: Vec<_> = (0..4000).map(|_| anywhere(&mut stream)).collect();
+        let plane: Vec<_> = globe.iter().map(|p| (p.0 * 1e4, p.1 * 1e4)).collect();
+        for (ground, places) in [(Ground::Globe, globe), (Ground::Plane { metres_per_unit: 2.0 }, plane)] {
+            let squares = Squares::new(ground, 8e5);
+            let count = |kept: &[u32]| {
+                let mut counts: BTreeMap<(i64, i64), usize> = BTreeMap::new();
+                kept.iter()
+                    .for_each(|&i| *counts.entry(squares.holding(places[i as usize])).or_default() += 1);
+                counts
+            };
+            let all = count(&(0..4000).collect::<Vec<u32>>());
+            for per_square in [0, 1, 3] {
+                let run = |seed| thin_by_square(&places, ground, metres(8e5), per_square, Seed(seed));
+                let thinned = run(1);
+                assert_eq!(thinned, run(1));
+                assert!(per_square == 0 || thinned.kept != run(2).kept);
+                let counts = count(&thinned.kept);
+                assert!(all.iter().all(|(s, n)| counts.get(s).copied().unwrap_or(0) == per_square.min(*n)));
+                assert_eq!(thinned.closest.is_some(), per_square > 0);
+            }
+            let everything = thin_by_square(&places, ground, metres(0.0), 1, Seed(1));
+            assert_eq!(everything.kept.len(), places.len());
+        }
+    }
+
+    #[test]
+    fn each_place_of_a_square_is_equally_likely() {
+        let places = [(1.0, 1.0), (2.0, 1.0), (2.0, 1.0), (3.0, 4.0), (700.0, 1.0)];
+        let mut counts = [0_u32; 5];
+        for seed in 0..4000 {
+            let ground = Ground::Plane { metres_per_unit: 1.0 };
+            let kept = thin_by_square(&places, ground, metres(100.0), 1, Seed(seed)).kept;
+            kept.iter().for_each(|&i| counts[i as usize] += 1);
+        }
+        assert_eq!(counts[4], 4000);
+        assert!(counts[..4].iter().all(|&n| n.abs_diff(1000) < 100), "{counts:?}");
+    }
+}
