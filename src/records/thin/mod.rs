@@ -26,7 +26,7 @@ pub use ground::Ground;
 pub use squares::thin_by_square;
 
 /// Places that all tries together look at before a search ends, where nothing else ends it sooner.
-const EFFORT: u64 = 800_000_000;
+const EFFORT: u64 = 500_000_000;
 /// Changes without gain, for each kept place, after which a search ends.
 const PATIENCE: usize = 200;
 
