@@ -21,8 +21,8 @@ pub struct Conflicts<'a> {
 }
 
 impl<'a> Conflicts<'a> {
-    /// The component of this number.
-    pub fn new(space: &'a Space, cells: &'a Cells, component: usize) -> Self {
+    /// The component of this number; its clashes are stored when at most `affordable` pairs are to be tried.
+    pub fn new(space: &'a Space, cells: &'a Cells, component: usize, affordable: u64) -> Self {
         let own = cells.components[component]..cells.components[component + 1];
         let first = cells.starts[own.start as usize];
         let len = (cells.starts[own.end as usize] - first) as usize;
@@ -33,7 +33,7 @@ impl<'a> Conflicts<'a> {
                 u64::from(cells.size(c)) * around
             })
             .sum();
-        if pairs <= STORED {
+        if pairs <= STORED.min(affordable) {
             out.stored = Some(out.listed());
         }
         out

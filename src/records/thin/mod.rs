@@ -120,9 +120,10 @@ impl Task {
         if input.len() == 1 {
             return vec![0];
         }
-        let conflicts = Conflicts::new(space, cells, self.component);
-        let share = conflicts.cubes as f64 / self.whole as f64 / self.tries as f64;
-        let effort = (EFFORT as f64 * share) as u64;
+        let cubes = cells.components[self.component + 1] - cells.components[self.component];
+        let share = EFFORT as f64 * f64::from(cubes) / self.whole as f64;
+        let effort = (share / self.tries as f64) as u64;
+        let conflicts = Conflicts::new(space, cells, self.component, (share / 4.0) as u64);
         let found: Vec<Vec<u32>> = (0..self.tries)
             .into_par_iter()
             .map(|index| {
