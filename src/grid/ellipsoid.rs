@@ -59,6 +59,37 @@ pub fn geodesic(from: (f64, f64), to: (f64, f64)) -> f64 {
     Geodesic::wgs84().inverse(from.1, from.0, to.1, to.0)
 }
 
+/// Straight lines that settle whether a geodesic is shorter than `distance` metres: below the first
+/// it is, from the second on it is not; between them only [`geodesic`] knows.
+///
+/// # Formula
+/// Shorter: 2ρ·sin(d/2ρ), ρ = b²/a the least radius of curvature. A geodesic of length g bends
+/// nowhere more than a circle of radius ρ, so its chord is at least 2ρ·sin(g/2ρ) while g ≤ πρ;
+/// a chord below 12,500 km leaves g no more than that.
+/// Not shorter: d itself (no path is shorter than its chord), or √(4a²·sin²(d/2b) + (a−b)²) where
+/// that is less: pulling the path in to the sphere of radius b lengthens it nowhere, and the angle
+/// between two places at least b and at most a from the centre is at least that of the formula.
+///
+/// # Source
+/// Schur, A. (1921), Mathematische Annalen 83, 143–148 (chords of curves that bend less).
+pub fn chords_that_settle(distance: f64) -> (f64, f64) {
+    let b = A * (1.0 - F);
+    let least = b * b / A;
+    if distance > std::f64::consts::PI * A {
+        return (f64::INFINITY, f64::INFINITY);
+    }
+    let bent = distance / (2.0 * least);
+    let sure = 12_500_000.0_f64;
+    let shorter = if bent < 1.4 { (2.0 * least * float::sin(bent)).min(sure) } else { sure };
+    let drawn = distance / (2.0 * b);
+    let not_shorter = if drawn < std::f64::consts::FRAC_PI_2 {
+        (float::square(2.0 * A * float::sin(drawn)) + float::square(A - b)).sqrt().min(distance)
+    } else {
+        f64::INFINITY
+    };
+    (shorter, not_shorter)
+}
+
 #[cfg(test)]
 mod tests {
     use super::*;
@@ -89,6 +120,34 @@ mod tests {
             let chord = p.iter().zip(q).map(|(p, q)| (p - q) * (p - q)).sum::<f64>().sqrt();
             assert!((arc_of_chord(chord) / s - 1.0).abs() < 1e-5, "{lat1}");
         }
+    }
+
+    /// Lines straight through, near and almost opposite, against geodesics all over the globe.
+    #[test]
+    fn chords_settle_only_what_geodesics_say() {
+        let mut stream = crate::maths::random::Stream::new(crate::units::Seed(5), "test", 0);
+        let mut place =
+            || (stream.unit() * 360.0 - 180.0, float::asin(stream.unit() * 2.0 - 1.0).to_degrees());
+        for i in 0..6000 {
+            let (p, mut q) = (place(), place());
+            let spread = float::pow(10.0, -((i % 7) as f64));
+            q = match i % 3 {
+                0 => q,
+                1 => (p.0 + q.0 * spread, (p.1 + q.1 * spread).clamp(-90.0, 90.0)),
+                _ => (p.0 + 180.0 + q.0 * spread, (-p.1 + q.1 * spread).clamp(-90.0, 90.0)),
+            };
+            let (a, b) = (geocentric(p.0, p.1), geocentric(q.0, q.1));
+            let chord = a.iter().zip(b).map(|(a, b)| (a - b) * (a - b)).sum::<f64>().sqrt();
+            let true_length = geodesic(p, q);
+            let slack = 1e-5_f64.min(true_length / 2.0);
+            // at a distance that is just the geodesic, the chord must be left in doubt
+            let (shorter, not_shorter) = chords_that_settle(true_length);
+            assert!(chord >= shorter - slack, "{p:?} {q:?} {chord} {shorter}");
+            assert!(chord <= not_shorter + slack, "{p:?} {q:?} {chord} {not_shorter}");
+        }
+        let (shorter, not_shorter) = chords_that_settle(10_000.0);
+        assert!(10_000.0 - shorter < 0.002 && not_shorter == 10_000.0);
+        assert_eq!(chords_that_settle(2.1e7), (f64::INFINITY, f64::INFINITY));
     }
 
     /// Zonal formula checked against quadrature and EPSG:6933 (pyproj 3.7.2), km².

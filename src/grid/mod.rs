@@ -6,7 +6,7 @@ mod ellipsoid;
 mod lattice;
 mod region;
 
-pub use ellipsoid::{MEAN_RADIUS, arc_of_chord, geocentric, geodesic, zone_area};
+pub use ellipsoid::{MEAN_RADIUS, arc_of_chord, chords_that_settle, geocentric, geodesic, zone_area};
 pub use lattice::{Crs, CrsKind, Grid, Metric};
 pub use region::{Field, Region};
 

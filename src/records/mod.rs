@@ -20,6 +20,7 @@ mod signs;
 mod smells;
 mod snap;
 mod split;
+mod thin;
 mod units;
 mod visits;
 
@@ -34,4 +35,5 @@ pub use piles::Pile;
 pub use row::{Content, Fields, Place, Row};
 pub use settings::{CapPlan, ColumnValues, Columns, Count, Quotes, RecordsPlan, SourcePlan};
 pub use split::{Folds, HeldOut, Training};
+pub use thin::{Ground, Thinned, thin_by_distance, thin_by_square};
 pub use units::{Records, Unit, VisitFacts, median_uncertainty};
