@@ -1,23 +1,25 @@
-//! Records in Parquet, part by part, streamed in batches of rows.
+//! Rows of Parquet files, streamed.
 
 use std::fs::File;
 use std::io::Read;
 use std::path::{Path, PathBuf};
+use std::sync::Arc;
 
-use arrow_array::cast::AsArray;
-use arrow_array::{Array, ArrayRef, RecordBatch, StringArray};
-use arrow_schema::DataType;
-use parquet::arrow::ProjectionMask;
-use parquet::arrow::arrow_reader::{ParquetRecordBatchReader, ParquetRecordBatchReaderBuilder};
-use rayon::prelude::*;
+use jiff::civil::Date;
+use jiff::{SignedDuration, Span, Timestamp};
+use parquet::basic::{LogicalType, TimeUnit};
+use parquet::errors::ParquetError;
+use parquet::file::reader::{FileReader, SerializedFileReader};
+use parquet::record::Field;
+use parquet::schema::types::Type;
 
 use crate::diag::{Diagnostic, Observer, Outcome};
-use crate::records::{Batch, Collector, Content, RecordsPlan, Row, Screener};
+use crate::records::{Collector, Content, RecordsPlan, Row, Screener};
 
 use super::layout::{Layout, Named, Texts};
 
-/// Rows read together, and how many such batches are screened at once.
-const BATCH: (usize, usize) = (16_384, 8);
+/// Rows screened together.
+const BATCH: usize = 16_384;
 
 /// Whether a file is Parquet, by its first bytes.
 pub(super) fn is_parquet(path: &Path) -> bool {
@@ -35,131 +37,136 @@ pub(super) fn parts(folder: &Path) -> Vec<PathBuf> {
     parts
 }
 
-/// A part: the file, what messages call it, and the number of its source in the plan.
-pub(super) struct PartFile<'a> {
-    pub(super) path: &'a Path,
-    pub(super) name: &'a str,
-    pub(super) source: usize,
+/// A Parquet file, opened.
+pub(super) struct Table<'a> {
+    reader: SerializedFileReader<File>,
+    /// What messages call it.
+    name: &'a str,
+    /// Its columns.
+    pub(super) names: Vec<String>,
 }
 
-/// Hands the rows of one file to the collector.
-pub(super) fn read(
-    part: &PartFile,
-    plan: &RecordsPlan,
-    (screener, collector): (&Screener, &mut Collector),
-    observer: &dyn Observer,
-) -> Outcome<()> {
-    let number = collector.open(part.name);
-    let builder = File::open(part.path).map_err(|e| broken(part.name, &e.to_string())).and_then(|f| {
-        ParquetRecordBatchReaderBuilder::try_new(f).map_err(|e| broken(part.name, &e.to_string()))
-    })?;
-    let names: Vec<String> = builder.schema().fields().iter().map(|f| f.name().clone()).collect();
-    let named = Named::in_order(&names);
-    let layout = Layout::find(&named, (plan, &plan.sources[part.source]), part.name, false)?;
-    collector.found(number, &layout.matches);
-    let wanted = layout.columns();
-    let mask = ProjectionMask::roots(builder.parquet_schema(), wanted.iter().copied());
-    let mut reader = builder
-        .with_projection(mask)
-        .with_batch_size(BATCH.0)
-        .build()
-        .map_err(|e| broken(part.name, &e.to_string()))?;
-    let mut row = 0;
-    loop {
-        let round = round(&mut reader, part.name)?;
-        if round.is_empty() {
-            return Ok(());
-        }
-        let screen = |rows: &RecordBatch| -> Outcome<Batch> {
-            let texts = columns(rows, &wanted, (names.len(), part.name))?;
-            let mut batch = screener.batch(number, part.source);
-            for i in 0..rows.num_rows() {
-                layout.fields(&RowOf { texts: &texts, row: i }, None, |fields| {
-                    let line = i as u64 + 1;
-                    screener.push(&mut batch, &Row { line, content: Content::Fields(fields) });
-                });
+impl<'a> Table<'a> {
+    /// Opens a file.
+    pub(super) fn open(path: &Path, name: &'a str) -> Outcome<Self> {
+        let file = File::open(path).map_err(|e| broken(name, &e.to_string()))?;
+        let reader = SerializedFileReader::new(file).map_err(|e| broken(name, &e.to_string()))?;
+        let schema = reader.metadata().file_metadata().schema();
+        let names = schema.get_fields().iter().map(|f| f.name().to_owned()).collect();
+        Ok(Self { reader, name, names })
+    }
+
+    /// Number of rows.
+    pub(super) fn rows(&self) -> u64 {
+        u64::try_from(self.reader.metadata().file_metadata().num_rows()).unwrap_or(0)
+    }
+
+    /// Hands the texts of some columns of every row to `each`, with the row's number from 1.
+    pub(super) fn each(
+        &self,
+        columns: &[usize],
+        each: &mut dyn FnMut(u64, &[String]) -> Outcome<()>,
+    ) -> Outcome<()> {
+        let schema = self.reader.metadata().file_metadata().schema();
+        let wanted: Vec<Arc<Type>> = columns.iter().map(|c| schema.get_fields()[*c].clone()).collect();
+        let fine: Vec<bool> = wanted.iter().map(|t| in_nanoseconds(t)).collect();
+        let fault = |e: ParquetError| broken(self.name, &e.to_string());
+        let projection =
+            Type::group_type_builder(schema.name()).with_fields(wanted).build().map_err(fault)?;
+        let rows = self.reader.get_row_iter(Some(projection)).map_err(fault)?;
+        let mut texts = vec![String::new(); columns.len()];
+        for (number, row) in rows.enumerate() {
+            let row = row.map_err(fault)?;
+            for (n, (label, field)) in row.get_column_iter().enumerate() {
+                texts[n] = text(field, fine[n]).ok_or_else(|| no_text(self.name, label))?;
             }
-            screener.settle(&mut batch)?;
-            Ok(batch)
-        };
-        let screened: Vec<Outcome<Batch>> = round.par_iter().map(screen).collect();
-        let mut batches = Vec::with_capacity(round.len());
-        for (batch, rows) in screened.into_iter().zip(&round) {
-            batches.push((batch?, row));
-            row += rows.num_rows() as u64;
-            observer.advance(rows.num_rows() as u64);
+            each(number as u64 + 1, &texts)?;
         }
-        collector.absorb(batches)?;
+        Ok(())
     }
 }
 
-fn round(reader: &mut ParquetRecordBatchReader, name: &str) -> Outcome<Vec<RecordBatch>> {
-    let batches = reader.by_ref().take(BATCH.1);
-    batches.map(|b| b.map_err(|e| broken(name, &e.to_string()).into())).collect()
-}
-
-/// The rows of a whole file, as text in all columns, for whoever wants them as they are.
-pub(super) fn schema_and_rows(
-    path: &Path,
-    name: &str,
-) -> Outcome<(arrow_schema::SchemaRef, ParquetRecordBatchReader)> {
-    let builder = File::open(path).map_err(|e| broken(name, &e.to_string())).and_then(|f| {
-        ParquetRecordBatchReaderBuilder::try_new(f).map_err(|e| broken(name, &e.to_string()))
+/// Hands the rows of a file to the collector.
+pub(super) fn read(
+    table: &Table,
+    (plan, source): (&RecordsPlan, usize),
+    (screener, collector): (&Screener, &mut Collector),
+    observer: &dyn Observer,
+) -> Outcome<()> {
+    let named = Named::in_order(&table.names);
+    let layout = Layout::find(&named, (plan, &plan.sources[source]), table.name, false)?;
+    let file = collector.open(table.name);
+    collector.found(file, &layout.matches);
+    let wanted = layout.columns();
+    let mut places = vec![0; table.names.len()];
+    wanted.iter().enumerate().for_each(|(n, column)| places[*column] = n);
+    let mut batch = screener.batch(file, source);
+    table.each(&wanted, &mut |line, texts| {
+        layout.fields(&RowOf { texts, places: &places }, None, |fields| {
+            screener.push(&mut batch, &Row { line, content: Content::Fields(fields) });
+        });
+        if line % BATCH as u64 == 0 {
+            observer.advance(BATCH as u64);
+            let full = std::mem::replace(&mut batch, screener.batch(file, source));
+            collector.take(screener, full)?;
+        }
+        Ok(())
     })?;
-    let schema = builder.schema().clone();
-    let reader = builder.with_batch_size(BATCH.0).build().map_err(|e| broken(name, &e.to_string()))?;
-    Ok((schema, reader))
+    collector.take(screener, batch)
 }
 
-/// One row of columns as text.
+/// One row's texts, and where each column of the file stands among them.
 struct RowOf<'a> {
-    texts: &'a [Option<StringArray>],
-    row: usize,
+    texts: &'a [String],
+    places: &'a [usize],
 }
 
 impl Texts for RowOf<'_> {
     fn own(&self, column: usize) -> &str {
-        match &self.texts[column] {
-            Some(array) if !array.is_null(self.row) => array.value(self.row),
-            _ => "",
+        &self.texts[self.places[column]]
+    }
+}
+
+/// Whether a column holds times in nanoseconds, which come as bare numbers.
+fn in_nanoseconds(column: &Type) -> bool {
+    matches!(
+        column.get_basic_info().logical_type_ref(),
+        Some(LogicalType::Timestamp(t)) if t.unit == TimeUnit::NANOS
+    )
+}
+
+/// A field as the text a table would hold; lists become names between bars. `None` for what is no text,
+/// number or date.
+fn text(field: &Field, nanoseconds: bool) -> Option<String> {
+    Some(match field {
+        Field::Null => String::new(),
+        Field::Str(s) => s.clone(),
+        Field::Bytes(b) => std::str::from_utf8(b.data()).ok()?.to_owned(),
+        Field::Date(days) => {
+            Date::constant(1970, 1, 1).checked_add(Span::new().try_days(*days).ok()?).ok()?.to_string()
         }
-    }
-}
-
-/// The columns read, as text, each at its place among all columns of the file.
-fn columns(
-    rows: &RecordBatch,
-    wanted: &[usize],
-    (all, name): (usize, &str),
-) -> Outcome<Vec<Option<StringArray>>> {
-    let mut texts: Vec<Option<StringArray>> = (0..all).map(|_| None).collect();
-    for (n, column) in wanted.iter().enumerate() {
-        let label = rows.schema().field(n).name().clone();
-        texts[*column] = Some(text(rows.column(n)).ok_or_else(|| no_text(name, &label, rows.column(n)))?);
-    }
-    Ok(texts)
-}
-
-/// A column as text; lists become names between bars.
-fn text(array: &ArrayRef) -> Option<StringArray> {
-    match array.data_type() {
-        DataType::List(_) => {
-            let list = array.as_list::<i32>();
-            let joined = |i: usize| -> Option<String> {
-                let inner = text(&list.value(i))?;
-                Some(inner.iter().flatten().collect::<Vec<_>>().join(" | "))
-            };
-            (0..list.len())
-                .map(|i| Some(Some(if list.is_null(i) { String::new() } else { joined(i)? })))
-                .collect()
+        Field::TimestampMillis(t) => moment(SignedDuration::from_millis(*t))?,
+        Field::TimestampMicros(t) => moment(SignedDuration::from_micros(*t))?,
+        Field::Long(t) if nanoseconds => moment(SignedDuration::from_nanos(*t))?,
+        Field::Float(v) => v.to_string(),
+        Field::Double(v) => v.to_string(),
+        Field::Group(row) if row.len() == 1 => text(row.get_column_iter().next()?.1, false)?,
+        Field::ListInternal(list) => {
+            let all: Option<Vec<String>> = list.elements().iter().map(|f| text(f, false)).collect();
+            all?.join(" | ")
         }
-        DataType::Struct(fields) if fields.len() == 1 => text(array.as_struct().column(0)),
-        _ => Some(arrow_cast::cast(array, &DataType::Utf8).ok()?.as_string::<i32>().clone()),
-    }
+        Field::Group(_) | Field::MapInternal(_) => return None,
+        number => number.to_string(),
+    })
 }
 
-fn no_text(file: &str, column: &str, array: &ArrayRef) -> Diagnostic {
-    let text = format!("column `{column}` is a {}, which is no text, number or date", array.data_type());
+/// A moment since 1970 as ISO 8601.
+fn moment(since: SignedDuration) -> Option<String> {
+    Some(Timestamp::UNIX_EPOCH.checked_add(since).ok()?.to_string())
+}
+
+fn no_text(file: &str, column: &str) -> Diagnostic {
+    let text = format!("column `{column}` holds something that is no text, number or date");
     Diagnostic::input("unusable_column", file, text).cure("write the column as text, or name another")
 }
 

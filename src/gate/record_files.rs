@@ -9,7 +9,7 @@ use crate::records::{Collector, RecordsPlan, Screener};
 use super::archive::{self, Archive};
 use super::container::{Container, Member, is_archive_folder};
 use super::files::Files;
-use super::parquet_in::{self, PartFile, is_parquet};
+use super::parquet_in::{self, is_parquet};
 use super::text::{Form, TextSource};
 use super::unpack::{Stream, broken, maybe_gzip};
 use super::zipped::is_zip;
@@ -97,9 +97,6 @@ fn no_records(file: &str) -> Diagnostic {
         .cure("give a file of records, a Darwin Core archive, or a folder of Parquet parts")
 }
 
-/// Where the records of a plan go.
-pub(super) type To<'a, 'b> = (&'a Screener<'b>, &'a mut Collector<'b>);
-
 /// Hands the records of a file to the collector.
 pub(super) fn read(
     files: &Files,
@@ -135,8 +132,8 @@ pub(super) fn read(
             let (screener, collector) = to;
             for path in &parts {
                 let name = part_name(file, path, parts.len());
-                let part = PartFile { path, name: &name, source };
-                parquet_in::read(&part, plan, (screener, &mut *collector), observer)?;
+                let table = parquet_in::Table::open(path, &name)?;
+                parquet_in::read(&table, (plan, source), (screener, &mut *collector), observer)?;
             }
         }
     }
