@@ -325,17 +325,8 @@ fn what_later_versions_fill_in_is_refused_by_name() {
         "\"estimate\"",
         "`empty_visits = \"estimate\"` is",
     );
-    refused(&with("[records]", "cap = { observer = \"10 %\" }"), "cap", "`cap` is");
     refused(&with("[records]", "sensitive = true"), "true", "coordinates");
-    refused(&SHORTEST.replace("r.tsv", "R.ZIP"), "\"R.ZIP\"", "`occurrence.txt`");
-    refused(&SHORTEST.replace("r.tsv", "r.parquet"), "\"r.parquet\"", "Parquet files are");
-    refused(&SHORTEST.replace("r.tsv", "r.csv.gz"), "\"r.csv.gz\"", "compressed files are");
-    refused(
-        &with("[[candidate]]", "")
-            .replace("[[candidate]]", "[[records.source]]\nfile = \"x\"\n[[candidate]]"),
-        "source",
-        "`source`",
-    );
+    refused(&SHORTEST.replace("r.tsv", "R.7Z"), "\"R.7Z\"", "packed in this way");
     for split in ["dates", "dataset", "observer"] {
         refused(&with("end", &format!("[holdout]\nsplit = '{split}'")), &format!("'{split}'"), "splits are");
     }

@@ -84,29 +84,13 @@ fn refuse_choice(log: &mut Log, choice: &Choice, item: &Item) {
     not_supported(log, &item.span(), &what, &cure);
 }
 
-/// Endings of files of records that later versions will read, with what they are and the way round.
-const LATER_FILES: [(&[&str], &str, &str); 3] = [
-    (
-        &[".zip", ".dwca"],
-        "Darwin Core archives and other zip files",
-        "unpack it and give its `occurrence.txt`",
-    ),
-    (
-        &[".parquet", ".geoparquet", ".pq"],
-        "Parquet files",
-        "save the records as delimited text or GeoPackage",
-    ),
-    (
-        &[".gz", ".tgz", ".bz2", ".xz", ".zst", ".tar", ".7z"],
-        "compressed files",
-        "unpack it and give the file inside",
-    ),
-];
+/// Endings of packed files that are not read.
+const PACKED: [&str; 8] = [".tgz", ".tar.gz", ".bz2", ".xz", ".zst", ".tar", ".7z", ".rar"];
 
 fn refuse_file(log: &mut Log, item: &Item) {
     let Some(file) = item.text().map(str::to_lowercase) else { return };
-    let ends = |endings: &[&str]| endings.iter().any(|ending| file.ends_with(ending));
-    if let Some((_, what, cure)) = LATER_FILES.iter().find(|(endings, ..)| ends(endings)) {
-        not_supported(log, &item.span(), what, cure);
+    if PACKED.iter().any(|ending| file.ends_with(ending)) {
+        let cure = "unpack it and give the file inside (zip and gzip are read as they are)";
+        not_supported(log, &item.span(), "files packed in this way", cure);
     }
 }

@@ -35,8 +35,10 @@ impl Encoding {
 pub(in crate::gate) struct Census {
     /// Lines in UTF-8.
     pub(in crate::gate) utf8: u64,
-    /// Lines that are none, and could be Latin-1.
+    /// Lines that are none, and look like words in Latin-1.
     pub(in crate::gate) latin1: u64,
+    /// Lines that look like neither.
+    pub(in crate::gate) neither: u64,
 }
 
 impl Census {
@@ -48,16 +50,33 @@ impl Census {
         for line in lines.split(|b| *b == terminator).filter(|l| !l.is_ascii()) {
             if std::str::from_utf8(line).is_ok() {
                 self.utf8 += 1;
-            } else if is_latin1(line) {
+            } else if is_latin1(line) && has_words(line) {
                 self.latin1 += 1;
+            } else {
+                self.neither += 1;
             }
         }
     }
 
     /// The encoding these lines speak for.
     pub(in crate::gate) fn verdict(self) -> Encoding {
-        if self.latin1 > self.utf8 { Encoding::Latin1 } else { Encoding::Utf8 }
+        if self.latin1 > self.utf8 + self.neither { Encoding::Latin1 } else { Encoding::Utf8 }
     }
+}
+
+/// Whether most letters beyond ASCII stand in words, as accents do: one or two together, beside an ASCII
+/// letter. Words of another alphabet, and bytes that are no text, do not.
+fn has_words(line: &[u8]) -> bool {
+    let (mut words, mut runs, mut at) = (0, 0, 0);
+    while let Some(from) = line[at..].iter().position(|b| !b.is_ascii()).map(|n| at + n) {
+        let to = line[from..].iter().position(u8::is_ascii).map_or(line.len(), |n| from + n);
+        let letter = |b: Option<&u8>| b.is_some_and(u8::is_ascii_alphabetic);
+        let beside = letter(from.checked_sub(1).and_then(|n| line.get(n))) || letter(line.get(to));
+        runs += 1;
+        words += usize::from(beside && to - from <= 2);
+        at = to;
+    }
+    words > 0 && 2 * words >= runs
 }
 
 /// Reads a whole text for what its lines are written in.
@@ -97,6 +116,9 @@ mod tests {
         assert_eq!(verdict(b"M\xfcller\nJos\xe9\n"), Encoding::Latin1);
         assert_eq!(verdict(b"M\xc3\xbcller\nJos\xe9\n"), Encoding::Utf8);
         assert_eq!(verdict(b"\x81\x8d\n"), Encoding::Utf8);
+        assert_eq!(verdict(b"a\t\xff\xfe\xff\t1\n"), Encoding::Utf8);
+        assert_eq!(verdict(b"\xcf\xe5\xf2\xf0\xee\xe2 \xc8.\n"), Encoding::Utf8);
+        assert_eq!(verdict(b"\xd6sterberg, 5\xb0 N\n\xc5ke\n"), Encoding::Latin1);
         assert_eq!(decode(b"M\xfcller"), "M\u{fc}ller");
     }
 

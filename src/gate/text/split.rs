@@ -197,7 +197,7 @@ mod tests {
         let mut all = Vec::new();
         loop {
             match rows.step() {
-                Step::Row(_) if rows.len() == 1 && rows.raw().is_empty() => {}
+                Step::Row(_) if rows.len() == 1 && rows.bytes(0).is_empty() => {}
                 Step::Row(_) => all.push((0..rows.len()).map(|f| rows.bytes(f).to_vec()).collect()),
                 Step::Open(_) => return None,
                 Step::End => return Some(all),
