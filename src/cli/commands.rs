@@ -11,8 +11,8 @@ use trodden::output::{
     finish, held_out_csv,
 };
 use trodden::plan::{GridPlan, StudyPlan, read, resolved};
-use trodden::records::{Detail, Rule, Sink};
-use trodden::study::{Needs, Notes, gather, run};
+use trodden::records::{Detail, Match, Rule, Sink};
+use trodden::study::{Gathered, Needs, Notes, gather, run};
 use trodden::units::{Bytes, Length};
 
 use super::args::{BuildArgs, CheckArgs, Common, CompareArgs};
@@ -95,13 +95,15 @@ pub fn check(args: &CheckArgs, common: &Common, voice: Voice) -> Outcome<()> {
     };
     bars_end(&bars);
     let inputs = looks(plan, &files, outcome.as_ref().ok().map(|g| g.records.ledger.read()));
-    let (problems, records) = match &outcome {
-        Ok(g) => (Vec::new(), Some(g.records.ledger.lines())),
-        Err(p) => (p.0.clone(), None),
+    let (problems, records, columns) = match &outcome {
+        Ok(g) => (Vec::new(), Some(g.records.clone()), columns(g)),
+        Err(p) => (p.0.clone(), None, Vec::new()),
     };
     let checked = Checked {
         grid: notes.grid.clone(),
         inputs,
+        records,
+        columns,
         memory_bytes: notes.cost.map(|c| c.memory.0),
         seconds: notes.cost.map(|c| c.seconds),
         problems,
@@ -111,9 +113,15 @@ pub fn check(args: &CheckArgs, common: &Common, voice: Voice) -> Outcome<()> {
     if common.json {
         result(&pretty(&check_json(&checked)));
     } else if !common.quiet {
-        result(&super::write::check_words(&opened.name, plan, &checked, records.as_deref()));
+        result(&super::write::check_words(&opened.name, plan, &checked));
     }
     outcome.map(drop)
+}
+
+/// How the columns of each file of records were found.
+fn columns(gathered: &Gathered) -> Vec<(String, Vec<Match>)> {
+    let named = |(file, found): &(u32, Vec<Match>)| (gathered.files[*file as usize].clone(), found.clone());
+    gathered.matches.iter().map(named).collect()
 }
 
 /// A look at every input, the grid's first, each file and table once.

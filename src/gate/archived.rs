@@ -3,27 +3,22 @@
 use hashbrown::HashMap;
 
 use crate::diag::{Diagnostic, Observer, Outcome};
-use crate::records::{Batch, Collector, Content, RecordsPlan, Row, Screener};
+use crate::records::{Content, Desk, Row};
 
 use super::archive::{Archive, Field, Table};
 use super::container::Container;
 use super::layout::{Layout, Named, Slot, Texts};
+use super::record_files::Reading;
 use super::text::{Dialect, Form, Head, Rows, TextSource, Work, scan};
 
-/// Hands the records of an archive to the collector.
-pub(super) fn read(
-    container: &Container,
-    archive: &Archive,
-    (plan, source): (&RecordsPlan, usize),
-    (screener, collector): (&Screener, &mut Collector),
-    observer: &dyn Observer,
-) -> Outcome<()> {
+/// Hands the records of an archive on.
+pub(super) fn read<D: Desk>(container: &Container, archive: &Archive, to: &mut Reading<D>) -> Outcome<()> {
     let named = named(&archive.records, archive.core.as_ref());
-    let layout = Layout::find(&named, (plan, &plan.sources[source]), &container.file, false)?;
+    let layout = Layout::find(&named, (to.plan, to.source()), &container.file, false)?;
     let parents = match (&archive.core, archive.records.id) {
         (Some(core), Some(id)) => {
-            let (parents, twice) = Parents::read(container, core, layout.parents(), observer)?;
-            collector.remarks(twice);
+            let (parents, twice) = Parents::read(container, core, layout.parents(), to.observer)?;
+            twice.into_iter().for_each(|r| to.tray.remark(r));
             Some((parents, id))
         }
         _ => None,
@@ -32,17 +27,24 @@ pub(super) fn read(
         let name = container.place(location);
         let text = text(container, location, &name, &archive.records);
         let head = Head::open(&text)?;
-        let file = collector.open(&name);
-        collector.found(file, &layout.matches);
-        let work = Screening { screener, layout: &layout, parents: parents.as_ref(), at: (file, source) };
-        let remark = scan(&text, head, &work, &mut |parts| collector.absorb(parts), observer)?;
-        collector.remarks(remark);
+        let file = to.tray.open(&name);
+        to.tray.found(file, &layout.matches);
+        let at = (file, to.number);
+        let work = Handing { desk: to.desk, layout: &layout, parents: parents.as_ref(), at };
+        let tray = &mut *to.tray;
+        let remark = scan(&text, head, &work, &mut |parts| tray.take(parts), to.observer)?;
+        remark.into_iter().for_each(|r| to.tray.remark(r));
     }
     Ok(())
 }
 
 /// A table's text at one location.
-fn text<'a>(container: &'a Container, location: &'a str, name: &'a str, table: &Table) -> TextSource<'a> {
+pub(super) fn text<'a>(
+    container: &'a Container,
+    location: &'a str,
+    name: &'a str,
+    table: &Table,
+) -> TextSource<'a> {
     let dialect = Dialect { separator: table.separator, terminator: table.line_end, quote: table.quote };
     let last = table.columns.iter().filter_map(|c| c.index).chain(table.id).max();
     let form = Form::Given {
@@ -174,9 +176,9 @@ impl Work for Core<'_> {
     }
 }
 
-/// Screens the records.
-struct Screening<'a> {
-    screener: &'a Screener<'a>,
+/// Hands the records to a desk.
+struct Handing<'a, D> {
+    desk: &'a D,
     layout: &'a Layout,
     parents: Option<&'a (Parents, usize)>,
     at: (usize, usize),
@@ -202,27 +204,27 @@ impl Texts for Joined<'_> {
     }
 }
 
-impl Work for Screening<'_> {
-    type Part = Batch;
+impl<D: Desk> Work for Handing<'_, D> {
+    type Part = D::Part;
 
-    fn begin(&self) -> Batch {
-        self.screener.batch(self.at.0, self.at.1)
+    fn begin(&self) -> D::Part {
+        self.desk.begin(self.at.0, self.at.1)
     }
 
-    fn row(&self, batch: &mut Batch, line: u64, rows: &Rows) {
+    fn row(&self, part: &mut D::Part, line: u64, rows: &Rows) {
         let parent = self.parents.and_then(|(parents, id)| {
             parents.rows.get(rows.field(*id).trim()).map(|row| (parents, row.as_ref()))
         });
         self.layout.fields(&Joined { rows, parent }, None, |fields| {
-            self.screener.push(batch, &Row { line, content: Content::Fields(fields) });
+            self.desk.push(part, &Row { line, content: Content::Fields(fields) });
         });
     }
 
-    fn unreadable(&self, batch: &mut Batch, line: u64, why: &str, lines: u64) {
-        self.screener.push(batch, &Row { line, content: Content::Unreadable(why, lines) });
+    fn unreadable(&self, part: &mut D::Part, line: u64, why: &str, lines: u64) {
+        self.desk.push(part, &Row { line, content: Content::Unreadable(why, lines) });
     }
 
-    fn end(&self, batch: &mut Batch) -> Outcome<()> {
-        self.screener.settle(batch)
+    fn end(&self, part: &mut D::Part) -> Outcome<()> {
+        self.desk.settle(part)
     }
 }

@@ -10,9 +10,10 @@ use gdal::{Dataset, DatasetOptions, GdalOpenFlags};
 use crate::diag::{Diagnostic, Observer, Outcome, Warnings};
 use crate::grid::{Grid, Region};
 use crate::proxies::{LayerPlan, Measure};
-use crate::records::{Collector, RecordsPlan, Screener};
+use crate::records::{Collector, Desk, RecordsPlan, Screener, Tray};
 
 use super::digest::{InputFile, digest};
+use super::record_files::Reading;
 use super::remote::remote_source;
 use super::scale::Wander;
 use super::sources::{GridRequest, LayerData, Peek, Sources};
@@ -111,6 +112,29 @@ impl Files {
         })
     }
 
+    /// Hands the rows of every file of records to a desk; all problems of all files together.
+    ///
+    /// # Errors
+    /// When a file cannot be read or lacks a column, or the desk or the tray fails.
+    pub fn read_records<D: Desk>(
+        &self,
+        plan: &RecordsPlan,
+        desk: &D,
+        tray: &mut dyn Tray<D::Part>,
+        observer: &dyn Observer,
+    ) -> Outcome<()> {
+        let mut problems = Vec::new();
+        for (number, source) in plan.sources.iter().enumerate() {
+            for file in &source.files {
+                let mut to = Reading { plan, number, desk, tray: &mut *tray, observer };
+                if let Err(p) = record_files::read(self, file, &mut to) {
+                    problems.extend(p.0);
+                }
+            }
+        }
+        if problems.is_empty() { Ok(()) } else { Err(crate::diag::Problems(problems)) }
+    }
+
     /// Every input opened so far, with its fingerprint; a shapefile's companions count as inputs.
     pub fn inputs(&self) -> Vec<InputFile> {
         let mut names: Vec<String> = Vec::new();
@@ -189,16 +213,7 @@ impl Sources for Files {
         (screener, collector): (&Screener, &mut Collector),
         observer: &dyn Observer,
     ) -> Outcome<()> {
-        let mut problems = Vec::new();
-        for (number, source) in plan.sources.iter().enumerate() {
-            for file in &source.files {
-                let to = (screener, &mut *collector);
-                if let Err(p) = record_files::read(self, (file, number), plan, to, observer) {
-                    problems.extend(p.0);
-                }
-            }
-        }
-        if problems.is_empty() { Ok(()) } else { Err(crate::diag::Problems(problems)) }
+        self.read_records(plan, screener, collector, observer)
     }
 
     fn project(&self, from: &str, grid: &Grid, x: &mut [f64], y: &mut [f64]) -> Outcome<()> {
