@@ -4,6 +4,7 @@ mod args;
 mod commands;
 mod progress;
 mod render;
+mod thin;
 mod write;
 
 use std::process::ExitCode;
@@ -51,6 +52,7 @@ fn run(arguments: &Arguments, voice: Voice) -> trodden::diag::Outcome<()> {
     match &arguments.command {
         Command::Check(a) => commands::check(a, &arguments.common, voice),
         Command::Build(a) => commands::build(a, &arguments.common, voice),
+        Command::Thin(a) => thin::thin(a, &arguments.common, voice),
         Command::Compare(a) => commands::compare(a, &arguments.common, voice),
     }
 }

@@ -57,11 +57,6 @@ impl<'a> Table<'a> {
         Ok(Self { reader, name, names })
     }
 
-    /// Number of rows.
-    pub(super) fn rows(&self) -> u64 {
-        u64::try_from(self.reader.metadata().file_metadata().num_rows()).unwrap_or(0)
-    }
-
     /// Hands the texts of some columns of every row to `each`, with the row's number from 1.
     pub(super) fn each(
         &self,
