@@ -17,7 +17,7 @@ use trodden::units::Bytes;
     name = "trodden",
     version,
     max_term_width = 100,
-    after_long_help = "Example:\n  trodden check plan.toml        what would be done, and every problem at once\n  \
+    after_long_help = "Example:\n  trodden init --records records.tsv --like temperature.tif -o plan.toml\n  trodden check plan.toml        what would be done, and every problem at once\n  \
                        trodden build plan.toml        writes out/effort.tif and out/report.html\n  \
                        trodden compare plan.toml      all candidates side by side\n  \
                        trodden thin records.tsv --distance \"5 km\" -o thinned.tsv\n\n\
@@ -64,6 +64,15 @@ pub enum Color {
 
 #[derive(Subcommand)]
 pub enum Command {
+    /// Write a commented plan from files, and say what is in them
+    ///
+    /// Finds the columns of the records by their Darwin Core terms or usual names, takes the grid from a
+    /// raster (or proposes one over a region), adds a layer for roads and for population, and proposes
+    /// candidates. The plan is checked before it is written, so it runs as it stands; each guess has a
+    /// comment beside it.
+    #[command(after_long_help = "Example:\n  trodden init --records records.tsv --like temperature.tif --roads roads.gpkg \\\n    \
+                                 --population people.tif -o plan.toml")]
+    Init(InitArgs),
     /// Look at a plan and its inputs, and say what a build would do
     ///
     /// Reads every input, brings it to the grid, screens the records, and reports the grid, the
@@ -131,6 +140,31 @@ pub struct ThinArgs {
     pub tries: NonZeroUsize,
     /// File to write (delimited text)
     #[arg(short, long, value_name = "FILE")]
+    pub output: PathBuf,
+}
+
+#[derive(Args)]
+pub struct InitArgs {
+    /// The records: delimited text, a Darwin Core archive, Parquet or a vector file
+    #[arg(long, value_name = "FILE")]
+    pub records: PathBuf,
+    /// A raster of your covariates: the result matches it cell for cell
+    #[arg(long, value_name = "RASTER", required_unless_present = "region", conflicts_with = "region")]
+    pub like: Option<PathBuf>,
+    /// Polygons to lay a new grid over
+    #[arg(long, value_name = "FILE")]
+    pub region: Option<PathBuf>,
+    /// Reference system of the records' coordinate columns (default: EPSG:4326)
+    #[arg(long, value_name = "CRS")]
+    pub crs: Option<String>,
+    /// Roads and paths
+    #[arg(long, value_name = "FILE")]
+    pub roads: Option<PathBuf>,
+    /// A raster of residents
+    #[arg(long, value_name = "RASTER")]
+    pub population: Option<PathBuf>,
+    /// The plan to write; it must not exist yet
+    #[arg(short, long, value_name = "FILE", default_value = "plan.toml")]
     pub output: PathBuf,
 }
 

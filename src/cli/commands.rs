@@ -21,10 +21,10 @@ use super::render::{Voice, result};
 use super::write::{DroppedTable, Run, details, manifest, surface};
 
 /// A plan read from disk, and the folder its paths are relative to.
-struct Opened {
-    plan: StudyPlan,
-    name: String,
-    folder: PathBuf,
+pub struct Opened {
+    pub plan: StudyPlan,
+    pub name: String,
+    pub folder: PathBuf,
 }
 
 fn open(path: &Path) -> Outcome<Opened> {
@@ -76,13 +76,24 @@ pub fn check(args: &CheckArgs, common: &Common, voice: Voice) -> Outcome<()> {
             result(&pretty(&check_json(&Checked { problems: problems.0.clone(), ..Checked::default() })));
         }
     })?;
+    let (checked, outcome) = look(&opened, common, voice);
+    if common.json {
+        result(&pretty(&check_json(&checked)));
+    } else if !common.quiet {
+        result(&super::write::check_words(&opened.name, &opened.plan, &checked));
+    }
+    outcome
+}
+
+/// Reads all that a plan asks for and says what is there; fits nothing.
+pub fn look(opened: &Opened, common: &Common, voice: Voice) -> (Checked, Outcome<()>) {
     let plan = &opened.plan;
     let files = Files::new(&opened.folder);
     let bars = Bars::new(voice.shows_progress());
     let needs = Needs { sources: &files, observer: &bars, memory: memory(common), kept: false };
     let mut notes = Notes::default();
     let target = opened.folder.join(&plan.output.folder);
-    let place = own_inputs(&opened, &target).and_then(|()| Staging::open(&target).map(drop));
+    let place = own_inputs(opened, &target).and_then(|()| Staging::open(&target).map(drop));
     let gathered = gather(plan, &needs, &mut Nowhere, &mut notes);
     let outcome = gathered.and_then(|g| trodden::study::ready(plan, &g).map(|()| g));
     let outcome = match (outcome, place) {
@@ -110,12 +121,7 @@ pub fn check(args: &CheckArgs, common: &Common, voice: Voice) -> Outcome<()> {
         warnings: notes.warnings.0.clone(),
     };
     warn(&notes.warnings, voice);
-    if common.json {
-        result(&pretty(&check_json(&checked)));
-    } else if !common.quiet {
-        result(&super::write::check_words(&opened.name, plan, &checked));
-    }
-    outcome.map(drop)
+    (checked, outcome.map(drop))
 }
 
 /// How the columns of each file of records were found.
@@ -139,7 +145,7 @@ fn looks(plan: &StudyPlan, files: &Files, rows: Option<u64>) -> Vec<CheckedInput
     }
     let look = |(file, table): (&str, Option<&str>)| {
         let p = Sources::peek(files, file, table).ok()?;
-        let text = p.kind == "text";
+        let text = !["raster", "vector"].contains(&p.kind);
         let single = plan.records.files().count() == 1;
         Some(CheckedInput {
             file: table.map_or_else(|| p.file.clone(), |t| format!("{}, {t}", p.file)),

@@ -2,6 +2,7 @@
 
 mod args;
 mod commands;
+mod init;
 mod progress;
 mod render;
 mod thin;
@@ -50,6 +51,7 @@ fn run(arguments: &Arguments, voice: Voice) -> trodden::diag::Outcome<()> {
         drop(rayon::ThreadPoolBuilder::new().num_threads(threads.get()).build_global());
     }
     match &arguments.command {
+        Command::Init(a) => init::init(a, &arguments.common, voice),
         Command::Check(a) => commands::check(a, &arguments.common, voice),
         Command::Build(a) => commands::build(a, &arguments.common, voice),
         Command::Thin(a) => thin::thin(a, &arguments.common, voice),

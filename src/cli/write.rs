@@ -318,7 +318,7 @@ fn seen(r: &Records) -> Vec<String> {
         ));
     }
     lines.push(format!(
-        "by {} observers and from {} data sets; {} {} in {} places",
+        "by {} observers or parties, from {} data sets; {} {} in {} places",
         r.reach.observers,
         r.reach.datasets,
         weight(r.weight()),
@@ -379,7 +379,12 @@ pub fn check_words(name: &str, plan: &StudyPlan, checked: &Checked) -> String {
     }
     for CheckedInput { file, kind, crs, count, .. } in &checked.inputs {
         let count = count.map_or(String::new(), |n| {
-            format!(", {n} {}", if *kind == "raster" { "cells" } else { "features" })
+            let what = match *kind {
+                "raster" => "cells",
+                "vector" => "features",
+                _ => "rows",
+            };
+            format!(", {n} {what}")
         });
         let turned = match &checked.grid {
             Some((g, _)) if !crs.is_empty() && *crs != g.crs.label => {

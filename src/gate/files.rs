@@ -13,11 +13,11 @@ use crate::proxies::{LayerPlan, Measure};
 use crate::records::{Collector, Desk, RecordsPlan, Screener, Tray};
 
 use super::digest::{InputFile, digest};
-use super::record_files::Reading;
+use super::record_files::{Kind, Reading};
 use super::remote::remote_source;
 use super::scale::Wander;
 use super::sources::{GridRequest, LayerData, Peek, Sources};
-use super::{crs, features, grid_in, record_files, scale, table, values};
+use super::{crs, features, grid_in, record_files, scale, values};
 
 /// Drivers that reach for a network.
 const NETWORK_DRIVERS: &str = "HTTP WMS WMTS WCS OGCAPI EEDA EEDAI PLMOSAIC DAAS STACIT STACTA NGW PLSCENES \
@@ -259,10 +259,17 @@ impl Sources for Files {
 
     fn peek(&self, file: &str, wanted: Option<&str>) -> Outcome<Peek> {
         let path = self.path(file)?;
-        if table::is_text(&path) {
+        let word = match record_files::kind(&path, file, wanted)? {
+            Kind::Text => "text",
+            Kind::Archive(..) => "archive",
+            Kind::Zipped(..) => "zipped text",
+            Kind::Parquet(_) => "Parquet",
+            Kind::Vector => "",
+        };
+        if !word.is_empty() {
             return Ok(Peek {
                 file: file.into(),
-                kind: "text",
+                kind: word,
                 crs: String::new(),
                 extent: None,
                 count: None,
