@@ -70,8 +70,10 @@ pub enum Command {
     /// raster (or proposes one over a region), adds a layer for roads and for population, and proposes
     /// candidates. The plan is checked before it is written, so it runs as it stands; each guess has a
     /// comment beside it.
-    #[command(after_long_help = "Example:\n  trodden init --records records.tsv --like temperature.tif --roads roads.gpkg \\\n    \
-                                 --population people.tif -o plan.toml")]
+    #[command(
+        after_long_help = "Example:\n  trodden init --records records.tsv --like temperature.tif --roads roads.gpkg \\\n    \
+                                 --population people.tif -o plan.toml"
+    )]
     Init(InitArgs),
     /// Look at a plan and its inputs, and say what a build would do
     ///
@@ -101,8 +103,10 @@ pub enum Command {
     ///
     /// Thinning evens out the places of records; it does not make up for where nobody looked. Weigh the
     /// background by an effort surface for that.
-    #[command(after_long_help = "Examples:\n  trodden thin records.tsv --distance \"5 km\" -o thinned.tsv\n  \
-                                 trodden thin records.zip --square \"10 km\" --per-square 3 -o thinned.tsv")]
+    #[command(
+        after_long_help = "Examples:\n  trodden thin records.tsv --distance \"5 km\" -o thinned.tsv\n  \
+                                 trodden thin records.zip --square \"10 km\" --per-square 3 -o thinned.tsv"
+    )]
     Thin(ThinArgs),
 }
 

@@ -48,7 +48,10 @@ pub fn init(args: &InitArgs, common: &Common, voice: Voice) -> Outcome<()> {
         result(&serde_json::to_string_pretty(&json).unwrap_or_default());
     } else if !common.quiet {
         let words = super::write::check_words(&opened.name, &opened.plan, &checked);
-        result(&format!("{words}\n  written  {}: read it through, then run `trodden build {0}`", opened.name));
+        result(&format!(
+            "{words}\n  written  {}: read it through, then run `trodden build {0}`",
+            opened.name
+        ));
     }
     Ok(())
 }
@@ -130,8 +133,7 @@ fn round(length: f64) -> f64 {
 
 fn records(args: &InitArgs, folder: &Path, files: &Files) -> Outcome<String> {
     let file = args.records.display().to_string();
-    let mut text =
-        format!("[records]\nfile = {}\n", quoted(&relative(&args.records, folder)));
+    let mut text = format!("[records]\nfile = {}\n", quoted(&relative(&args.records, folder)));
     let names = files.columns(&file, &default_source(args))?;
     let mut found = Vec::new();
     for (key, term) in TERMS {
@@ -141,15 +143,28 @@ fn records(args: &InitArgs, folder: &Path, files: &Files) -> Outcome<String> {
         match column(&names, key, term) {
             Some(column) if column == term => found.push(key),
             Some(column) => {
-                let _ = writeln!(text, "{key} = {}   # no column is named `{term}`; taken by its name, so look whether it is right", quoted(column));
+                let _ = writeln!(
+                    text,
+                    "{key} = {}   # no column is named `{term}`; taken by its name, so look whether it is right",
+                    quoted(column)
+                );
                 found.push(key);
             }
-            None => {}
+            None => {
+                let _ = writeln!(
+                    text,
+                    "# {key} = \"…\"   # no column named `{term}`, or as such columns usually are"
+                );
+            }
         }
     }
     let crs = args.crs.as_deref().unwrap_or("EPSG:4326");
     if !names.geometry {
-        let why = if args.crs.is_some() { "as given" } else { "longitude and latitude on WGS 84, unless a column `geodeticDatum` says otherwise" };
+        let why = if args.crs.is_some() {
+            "as given"
+        } else {
+            "longitude and latitude on WGS 84, unless a column `geodeticDatum` says otherwise"
+        };
         let _ = writeln!(text, "crs = {}   # {why}", quoted(crs));
     }
     let visits = found.contains(&"date") || found.contains(&"observer");
@@ -175,7 +190,16 @@ fn default_source(args: &InitArgs) -> SourcePlan {
         files: vec![args.records.display().to_string()],
         table: None,
         quotes: None,
-        columns: Columns { longitude, latitude, date, observer, dataset, taxon, uncertainty, stated: Vec::new() },
+        columns: Columns {
+            longitude,
+            latitude,
+            date,
+            observer,
+            dataset,
+            taxon,
+            uncertainty,
+            stated: Vec::new(),
+        },
         crs: "EPSG:4326".into(),
     }
 }

@@ -47,8 +47,12 @@ pub fn thin(args: &ThinArgs, common: &Common, voice: Voice) -> Outcome<()> {
     let mut staging = Staging::open(folder)?;
     let path = staging.path(name);
     let unwritten = |e: std::io::Error| {
-        Diagnostic::output("cannot_write", args.output.display().to_string(), format!("cannot be written: {e}"))
-            .cure("free some space, or give another file with `-o`")
+        Diagnostic::output(
+            "cannot_write",
+            args.output.display().to_string(),
+            format!("cannot be written: {e}"),
+        )
+        .cure("free some space, or give another file with `-o`")
     };
     let mut out = BufWriter::new(File::create(&path).map_err(unwritten)?);
     files.copy_records(&plan, Copy::new(&kept, &mut out, &bars))?;
@@ -76,17 +80,23 @@ fn rule(args: &ThinArgs) -> Outcome<Rule> {
     let length = |text: &str, option: &str| -> Outcome<Metres> {
         match Length::parse(text) {
             Ok(Length::Metres(m)) if m.get() > 0.0 => Ok(m),
-            _ => Err(Diagnostic::plan("bad_quantity", option, format!("`{text}` is no length above zero in m or km"))
-                .cure(format!("write {option} \"5 km\""))
-                .into()),
+            _ => Err(Diagnostic::plan(
+                "bad_quantity",
+                option,
+                format!("`{text}` is no length above zero in m or km"),
+            )
+            .cure(format!("write {option} \"5 km\""))
+            .into()),
         }
     };
     match (&args.distance, &args.square) {
         (Some(d), _) => Ok(Rule::Distance(length(d, "--distance")?)),
         (None, Some(s)) => Ok(Rule::Square(length(s, "--square")?, args.per_square.get())),
-        (None, None) => Err(Diagnostic::plan("missing_option", "thin", "neither --distance nor --square is given")
-            .cure("give --distance \"5 km\", or --square \"10 km\"")
-            .into()),
+        (None, None) => {
+            Err(Diagnostic::plan("missing_option", "thin", "neither --distance nor --square is given")
+                .cure("give --distance \"5 km\", or --square \"10 km\"")
+                .into())
+        }
     }
 }
 
@@ -178,11 +188,8 @@ fn words(file: &str, list: &SpotList, thinned: &Thinned, (rule, args): (&Rule, &
         Rule::Square(s, n) => format!("at most {n} in each square of {s}"),
     };
     let closest = thinned.closest.map_or(String::new(), |c| format!("; the closest two are {c} apart"));
-    let mut lines = vec![format!(
-        "{file}: {} records read, {} kept ({kept}{closest})",
-        list.read(),
-        thinned.kept.len()
-    )];
+    let mut lines =
+        vec![format!("{file}: {} records read, {} kept ({kept}{closest})", list.read(), thinned.kept.len())];
     if list.unreadable + list.placeless > 0 {
         lines.push(format!(
             "  left out: {} rows that cannot be read, {} without a place",

@@ -3,7 +3,7 @@
 use hashbrown::HashMap;
 
 use crate::diag::{Diagnostic, Observer, Outcome};
-use crate::records::{Content, Desk, Row};
+use crate::records::{Content, Desk, Quotes, Row};
 
 use super::archive::{Archive, Field, Table};
 use super::container::Container;
@@ -25,7 +25,7 @@ pub(super) fn read<D: Desk>(container: &Container, archive: &Archive, to: &mut R
     };
     for location in &archive.records.locations {
         let name = container.place(location);
-        let text = text(container, location, &name, &archive.records);
+        let text = text((container, location), &name, &archive.records, to.source().quotes);
         let head = Head::open(&text)?;
         let file = to.tray.open(&name);
         to.tray.found(file, &layout.matches);
@@ -38,14 +38,19 @@ pub(super) fn read<D: Desk>(container: &Container, archive: &Archive, to: &mut R
     Ok(())
 }
 
-/// A table's text at one location.
+/// A table's text at one location; `quotes` overrides the description.
 pub(super) fn text<'a>(
-    container: &'a Container,
-    location: &'a str,
+    (container, location): (&'a Container, &'a str),
     name: &'a str,
     table: &Table,
+    quotes: Option<Quotes>,
 ) -> TextSource<'a> {
-    let dialect = Dialect { separator: table.separator, terminator: table.line_end, quote: table.quote };
+    let quote = match quotes {
+        None => table.quote,
+        Some(Quotes::None) => None,
+        Some(Quotes::Double) => Some(b'"'),
+    };
+    let dialect = Dialect { separator: table.separator, terminator: table.line_end, quote };
     let last = table.columns.iter().filter_map(|c| c.index).chain(table.id).max();
     let form = Form::Given {
         dialect,
@@ -73,11 +78,14 @@ fn named(records: &Table, core: Option<&Table>) -> Vec<Named> {
     columns
 }
 
+/// What is kept of a row of the core.
+type Fields = Box<[Box<str>]>;
+
 /// Rows of the core, by their identifier; only what is needed of them.
 struct Parents {
     /// Where each field of the core stands among those kept.
     places: Vec<Option<usize>>,
-    rows: HashMap<Box<str>, Box<[Box<str>]>>,
+    rows: HashMap<Box<str>, Fields>,
 }
 
 impl Parents {
@@ -94,7 +102,7 @@ impl Parents {
         let (mut twice, mut unreadable, mut first) = (0_u64, 0_u64, None);
         for location in &core.locations {
             let name = container.place(location);
-            let text = text(container, location, &name, core);
+            let text = text((container, location), &name, core, None);
             let head = Head::open(&text)?;
             let work = Core { core, wanted: &wanted };
             let mut take = |parts: Vec<(CorePart, u64)>| -> Outcome<()> {
@@ -145,7 +153,7 @@ struct Core<'a> {
 /// Rows of a block of the core.
 #[derive(Default)]
 struct CorePart {
-    rows: Vec<(Box<str>, Box<[Box<str>]>)>,
+    rows: Vec<(Box<str>, Fields)>,
     unreadable: u64,
 }
 

@@ -136,7 +136,7 @@ fn archived(container: &Container, archive: &Archive, copy: &mut Copy) -> Outcom
     let placed = !ADDED.iter().all(|term| own(term));
     for location in &archive.records.locations {
         let name = container.place(location);
-        let source = super::archived::text(container, location, &name, &archive.records);
+        let source = super::archived::text((container, location), &name, &archive.records, None);
         text(&source, &terms(&archive.records), placed, copy)?;
     }
     Ok(())

@@ -267,13 +267,7 @@ impl Sources for Files {
             Kind::Vector => "",
         };
         if !word.is_empty() {
-            return Ok(Peek {
-                file: file.into(),
-                kind: word,
-                crs: String::new(),
-                extent: None,
-                count: None,
-            });
+            return Ok(Peek { file: file.into(), kind: word, crs: String::new(), extent: None, count: None });
         }
         if let Ok(raster) = self.raster(file)
             && raster.raster_count() > 0

@@ -22,13 +22,26 @@ pub struct ColumnNames {
 const USUAL: [(&str, &[&str]); 7] = [
     ("longitude", &["longitude", "lon", "long", "lng", "decimallongitude", "x", "xcoord", "easting", "east"]),
     ("latitude", &["latitude", "lat", "decimallatitude", "y", "ycoord", "northing", "north"]),
-    ("date", &["date", "eventdate", "observationdate", "obsdate", "dateobserved", "datecollected", "observedon"]),
-    ("observer", &["observer", "recorder", "collector", "recordedby", "observername", "observerid", "recordedbyid"]),
+    (
+        "date",
+        &["date", "eventdate", "observationdate", "obsdate", "dateobserved", "datecollected", "observedon"],
+    ),
+    (
+        "observer",
+        &["observer", "recorder", "collector", "recordedby", "observername", "observerid", "recordedbyid"],
+    ),
     ("dataset", &["dataset", "datasetname", "datasetkey", "datasetid", "source", "project", "survey"]),
     ("taxon", &["taxon", "species", "scientificname", "taxonname", "speciesname"]),
     (
         "uncertainty",
-        &["uncertainty", "coordinateuncertainty", "uncertaintym", "accuracy", "positionalaccuracy", "uncertaintymetres"],
+        &[
+            "uncertainty",
+            "coordinateuncertainty",
+            "uncertaintym",
+            "accuracy",
+            "positionalaccuracy",
+            "uncertaintymetres",
+        ],
     ),
 ];
 

@@ -25,7 +25,8 @@ impl<'a> OnEarth<'a> {
     /// When the CRS is unknown.
     pub fn new(files: &'a Files, from: &str, place: &str, plane: bool) -> Outcome<Self> {
         let srs = crs::parse(from, place)?;
-        let known = crs::describe(&srs).ok_or_else(|| super::features::no_way(place, "longitude and latitude"))?;
+        let known =
+            crs::describe(&srs).ok_or_else(|| super::features::no_way(place, "longitude and latitude"))?;
         let wgs84 = crs::describe(&crs::parse("EPSG:4326", place)?).expect("WGS 84 is known");
         let plane = plane && known.kind != CrsKind::Geographic;
         Ok(Self { files, from: from.to_owned(), kind: known.kind, wgs84, plane })

@@ -16,6 +16,9 @@ use super::record_files::Reading;
 /// Features screened together.
 const BATCH: usize = 16_384;
 
+/// Takes a feature: its number, its attributes as text, and its place.
+type Each<'a> = dyn FnMut(u64, &[String], Option<Place>) -> Outcome<()> + 'a;
+
 /// A layer of records, opened.
 pub(super) struct Points<'a> {
     file: &'a str,
@@ -41,7 +44,6 @@ impl<'a> Points<'a> {
         } else {
             None
         };
-        drop(layer);
         Ok(Self { file, dataset, table: source.table.clone(), names, own })
     }
 
@@ -51,10 +53,7 @@ impl<'a> Points<'a> {
     }
 
     /// Hands every feature to `each`: its number, its attributes as text, and its place.
-    pub(super) fn each(
-        &self,
-        each: &mut dyn FnMut(u64, &[String], Option<Place>) -> Outcome<()>,
-    ) -> Outcome<()> {
+    pub(super) fn each(&self, each: &mut Each) -> Outcome<()> {
         let mut layer = open_layer(&self.dataset, self.file, self.table.as_deref())?;
         for feature in layer.features() {
             let texts: Vec<String> = (0..self.names.len()).map(|i| text(&feature, i)).collect();

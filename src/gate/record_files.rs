@@ -125,7 +125,9 @@ pub(super) fn read<D: Desk>(files: &Files, file: &str, to: &mut Reading<D>) -> O
     let path = files.path(file)?;
     let quotes = to.source().quotes;
     let what = format!("read {file}");
-    match kind(&path, file, to.source().table.as_deref())? {
+    let kind = kind(&path, file, to.source().table.as_deref())?;
+    fits(&kind, file, to.source())?;
+    match kind {
         Kind::Vector => {
             let points = Points::open(files, file, to.source())?;
             to.observer.begin(&what, points.count());
@@ -156,6 +158,30 @@ pub(super) fn read<D: Desk>(files: &Files, file: &str, to: &mut Reading<D>) -> O
     }
     to.observer.end();
     Ok(())
+}
+
+/// Refuses keys of the plan that say nothing of this kind of file.
+fn fits(kind: &Kind, file: &str, source: &SourcePlan) -> Outcome<()> {
+    let (what, table, quotes) = match kind {
+        Kind::Text => ("is delimited text", false, true),
+        Kind::Archive(..) => {
+            ("is a Darwin Core archive, which says itself where its records are", false, true)
+        }
+        Kind::Zipped(..) => ("is a zip file", true, true),
+        Kind::Parquet(_) => ("is Parquet", false, false),
+        Kind::Vector => ("is a vector file", true, false),
+    };
+    let unfit = [("table", source.table.is_some() && !table), ("quotes", source.quotes.is_some() && !quotes)];
+    match unfit.iter().find(|(_, unfit)| *unfit) {
+        None => Ok(()),
+        Some((key, _)) => Err(Diagnostic::plan(
+            "misplaced_key",
+            format!("[records] {key}"),
+            format!("`{file}` {what}: `{key}` says nothing of it"),
+        )
+        .cure(format!("remove `{key}`, or give that file a `[[records.source]]` of its own"))
+        .into()),
+    }
 }
 
 /// What messages call a part of a folder.
