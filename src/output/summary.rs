@@ -56,8 +56,9 @@ fn dates(r: &Records) -> Value {
     Value::Object(dates)
 }
 
+/// How many records share one place; not which place, as this file is handed on.
 fn pile(r: &Records, p: &Pile) -> Value {
-    json!({"x": p.xy.0, "y": p.xy.1, "records": p.records, "share": p.records as f64 / r.ledger.kept() as f64})
+    json!({"records": p.records, "share": p.records as f64 / r.ledger.kept() as f64})
 }
 
 fn cap(c: &Capped) -> Value {
