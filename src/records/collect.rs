@@ -133,8 +133,7 @@ impl<'a> Collector<'a> {
             let datasets = self.datasets.adopt(&batch.datasets);
             numbered.push(Numbered { batch, observers, datasets, line });
         }
-        self.piles.count(&numbered.iter().map(|n| &n.batch).collect::<Vec<_>>());
-        count(&mut self.parts, &numbered, self.keep);
+        count(&mut self.parts, &mut self.piles, &numbered, self.keep);
         Ok(())
     }
 

@@ -23,8 +23,9 @@ use trodden::units::{Bytes, Seed};
 
 const ROWS: usize = 5_000_000;
 const RUNS: usize = 3;
-const WEST: f64 = 10.0;
-const NORTH: f64 = 60.0;
+/// West and north end in a digit that no coordinate has, so that none lies between two cells.
+const WEST: f64 = 9.996_375_1;
+const NORTH: f64 = 60.003_624_9;
 const CELL: f64 = 0.01;
 const COLUMNS: usize = 1200;
 const LINES: usize = 800;
