@@ -16,7 +16,7 @@ use super::units::{Records, Unit};
 use super::visits::{Numbered, PARTS, Part, Sorted, count, outings, sorted};
 
 /// Takes note of rows that were dropped.
-pub trait Sink {
+pub trait Sink: Send {
     /// A row was dropped.
     ///
     /// # Errors

@@ -55,25 +55,28 @@ struct Parsed<P> {
     open: Option<usize>,
 }
 
-/// Reads all rows; what deserves attention about the file is returned.
+/// Reads all rows; what deserves attention about the file is returned. Parts are taken while those after them
+/// are worked on.
 pub(in crate::gate) fn scan<W: Work>(
     source: &TextSource,
     head: Head,
     work: &W,
-    take: &mut dyn FnMut(Parts<W::Part>) -> Outcome<()>,
+    take: &mut (dyn FnMut(Parts<W::Part>) -> Outcome<()> + Send),
     observer: &dyn Observer,
 ) -> Outcome<Option<Diagnostic>> {
     let (dialect, width) = (head.dialect, head.width);
     let mut line = head.lines;
     let mut feed = Feed::new(source, head, observer);
     let mut queue = VecDeque::from(feed.round(1)?);
+    let mut done = Vec::new();
     while !queue.is_empty() {
         let round: Vec<Ready> = queue.drain(..queue.len().min(ROUND)).collect();
         let missing = ROUND.saturating_sub(queue.len());
         let parse = || -> Vec<_> { round.par_iter().map(|b| parse(b, dialect, width, work)).collect() };
-        let (parsed, fresh) = rayon::join(parse, || feed.round(missing));
+        let ahead = || rayon::join(parse, || feed.round(missing));
+        let (taken, (parsed, fresh)) = rayon::join(|| take(std::mem::take(&mut done)), ahead);
+        taken?;
         queue.extend(fresh?);
-        let mut done = Vec::with_capacity(round.len());
         let mut round = VecDeque::from(round);
         for parsed in parsed {
             let parsed = parsed?;
@@ -88,8 +91,8 @@ pub(in crate::gate) fn scan<W: Work>(
                 break;
             }
         }
-        take(done)?;
     }
+    take(done)?;
     Ok(feed.remark)
 }
 
