@@ -23,7 +23,7 @@ const ADDED: [&str; 2] = ["decimalLongitude", "decimalLatitude"];
 pub struct Copy<'a> {
     /// The rows wanted, by file and line, in that order.
     kept: &'a [Spot],
-    out: &'a mut dyn Write,
+    out: &'a mut (dyn Write + Send),
     observer: &'a dyn Observer,
     /// Number of the file at hand.
     file: u32,
@@ -31,7 +31,7 @@ pub struct Copy<'a> {
 
 impl<'a> Copy<'a> {
     /// Copies these rows, which are in the order of files and lines.
-    pub fn new(kept: &'a [Spot], out: &'a mut dyn Write, observer: &'a dyn Observer) -> Self {
+    pub fn new(kept: &'a [Spot], out: &'a mut (dyn Write + Send), observer: &'a dyn Observer) -> Self {
         Self { kept, out, observer, file: 0 }
     }
 

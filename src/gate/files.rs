@@ -120,7 +120,7 @@ impl Files {
         &self,
         plan: &RecordsPlan,
         desk: &D,
-        tray: &mut dyn Tray<D::Part>,
+        tray: &mut (dyn Tray<D::Part> + Send),
         observer: &dyn Observer,
     ) -> Outcome<()> {
         let mut problems = Vec::new();

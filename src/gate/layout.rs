@@ -181,7 +181,7 @@ impl Layout {
     /// Hands the fields of a row to `each`.
     pub(super) fn fields<'a>(
         &'a self,
-        row: &'a dyn Texts,
+        row: &'a impl Texts,
         point: Option<Point<'a>>,
         each: impl FnOnce(Fields),
     ) {
@@ -217,7 +217,7 @@ impl Layout {
 
 impl Slot {
     /// The field's text in a row.
-    fn text<'a>(&'a self, row: &'a dyn Texts) -> &'a str {
+    fn text<'a>(&'a self, row: &'a impl Texts) -> &'a str {
         if let Some(column) = self.own {
             let text = row.own(column);
             if !text.is_empty() || (self.parent.is_none() && self.fixed.is_none()) {

@@ -104,7 +104,7 @@ pub(super) struct Reading<'a, D: Desk> {
     /// Number of the source in the plan.
     pub(super) number: usize,
     pub(super) desk: &'a D,
-    pub(super) tray: &'a mut dyn Tray<D::Part>,
+    pub(super) tray: &'a mut (dyn Tray<D::Part> + Send),
     pub(super) observer: &'a dyn Observer,
 }
 

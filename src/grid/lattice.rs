@@ -112,7 +112,7 @@ impl Grid {
         let mut column = (x - self.transform[0]) / self.transform[1];
         if self.crs.kind == CrsKind::Geographic {
             let turn = 360.0 / self.transform[1];
-            let turned = column.rem_euclid(turn);
+            let turned = if column >= 0.0 && column < turn { column } else { column.rem_euclid(turn) };
             // a place on the far edge stays there rather than jumping round to the near one
             column = if column == self.columns as f64 && !self.wraps() { column } else { turned };
         }

@@ -10,7 +10,7 @@ use crate::grid::{CrsKind, Region};
 
 use super::ledger::{Ledger, Rule};
 use super::names::Names;
-use super::row::{Content, Fields, Row};
+use super::row::{Content, Fields, Row, trimmed};
 use super::screen::{Passed, Radius, date_of, precision};
 use super::settings::RecordsPlan;
 use super::signs::{Seen, Signs, Turn};
@@ -196,8 +196,8 @@ impl<'a> Screener<'a> {
                 let waiting = Waiting {
                     line,
                     observer: batch.observers.number(&observer_set(fields.observer)),
-                    dataset: batch.datasets.number(fields.dataset.trim()),
-                    datum: batch.datum(fields.datum.trim()),
+                    dataset: batch.datasets.number(trimmed(fields.dataset)),
+                    datum: batch.datum(trimmed(fields.datum)),
                     passed,
                     degrees,
                 };
@@ -233,8 +233,12 @@ impl<'a> Screener<'a> {
             let (mut x, mut y): (Vec<f64>, Vec<f64>) = rows.iter().map(|w| w.passed.xy).unzip();
             self.projection.turn(batch.source, datum, &mut x, &mut y)?;
             let mut strays = std::mem::take(&mut batch.twisted);
+            // all cells are looked up before any is used, so that no row waits for memory
+            let located = |(x, y): (&f64, &f64)| self.region.grid().locate(*x, *y);
+            let flats: Vec<Option<usize>> = x.iter().zip(&y).map(located).collect();
+            let cells: Vec<_> = flats.iter().map(|f| (*f, f.and_then(|f| self.region.compact(f)))).collect();
             for (i, row) in rows.iter().enumerate() {
-                if !self.place(batch, row, x[i], y[i]) {
+                if !self.place(batch, row, (x[i], y[i]), cells[i]) {
                     strays.push((row.line, row.passed.xy.0, row.passed.xy.1));
                 }
             }
@@ -246,16 +250,22 @@ impl<'a> Screener<'a> {
         Ok(())
     }
 
-    /// Files a row under its cell, or drops it; `false` when it is outside the grid.
-    fn place(&self, batch: &mut Batch, row: &Waiting, x: f64, y: f64) -> bool {
+    /// Files a row under its cell, or drops it; `false` when it is outside the grid. `found`: the cell of
+    /// the grid, and of the region.
+    fn place(
+        &self,
+        batch: &mut Batch,
+        row: &Waiting,
+        (x, y): (f64, f64),
+        found: (Option<usize>, Option<usize>),
+    ) -> bool {
         batch.signs.stretch(x, y);
-        let flat = self.region.grid().locate(x, y);
-        let inside = flat.and_then(|f| self.region.compact(f));
+        let (flat, inside) = found;
         let nearest =
             |snapper: &Option<Snapper>| snapper.as_ref().and_then(|s| s.nearest(&self.region, x, y));
         if let Some(cell) = inside.or_else(|| nearest(&self.snapper)) {
             batch.ledger.keep(inside.is_none());
-            let offset = inside.map_or([0; 2], |_| self.offset(cell, x, y));
+            let offset = inside.and(flat).map_or([0; 2], |flat| self.offset(flat, x, y));
             batch.signs.kept(Seen { file: batch.file, line: row.line, xy: row.passed.xy }, row.degrees);
             batch.placed[part_of(cell as u32)].push(Placed {
                 line: row.line,
@@ -278,11 +288,12 @@ impl<'a> Screener<'a> {
     }
 
     /// Where in its cell a place lies, in parts of a column and a row.
-    fn offset(&self, cell: usize, x: f64, y: f64) -> [i32; 2] {
+    fn offset(&self, flat: usize, x: f64, y: f64) -> [i32; 2] {
         let grid = self.region.grid();
-        let (cx, cy) = self.region.centre(cell);
+        let (column, row) = grid.position(flat);
+        let (cx, cy) = grid.centre(column, row);
         let mut across = (x - cx) / grid.transform[1];
-        if grid.crs.kind == CrsKind::Geographic {
+        if grid.crs.kind == CrsKind::Geographic && across.abs() > 1.0 {
             let turn = 360.0 / grid.transform[1];
             across -= (across / turn).round() * turn;
         }

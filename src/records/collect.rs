@@ -17,7 +17,7 @@ use super::units::{Reach, Records, Unit};
 use super::visits::{Numbered, PARTS, Part, Sorted, count, days, outings, sorted};
 
 /// Takes note of rows that were dropped.
-pub trait Sink {
+pub trait Sink: Send {
     /// A row was dropped.
     ///
     /// # Errors
@@ -112,8 +112,7 @@ impl<'a> Collector<'a> {
             let datasets = self.datasets.adopt(&batch.datasets);
             numbered.push(Numbered { batch, observers, datasets, line });
         }
-        self.piles.count(&numbered.iter().map(|n| &n.batch).collect::<Vec<_>>());
-        count(&mut self.parts, &numbered, self.keep);
+        count(&mut self.parts, &mut self.piles, &numbered, self.keep);
         Ok(())
     }
 

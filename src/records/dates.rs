@@ -5,6 +5,8 @@
 
 use jiff::civil::{Date, ISOWeekDate};
 
+use super::row::trimmed;
+
 /// How finely a date was written.
 #[derive(Debug, Clone, Copy, PartialEq, Eq, PartialOrd, Ord)]
 pub enum Precision {
@@ -41,7 +43,10 @@ impl DateRange {
     /// # Source
     /// ISO 8601-1:2019, calendar, week and ordinal dates, basic and extended form.
     pub fn parse(text: &str) -> Option<Self> {
-        let text = text.trim();
+        let text = trimmed(text);
+        if let Some(day) = plain_day(text) {
+            return Some(day);
+        }
         let Some((from, to)) = text.split_once('/') else {
             return single(text);
         };
@@ -74,8 +79,8 @@ fn single_completed(from: &str, to: &str) -> Option<DateRange> {
 /// One date without a slash.
 fn single(text: &str) -> Option<DateRange> {
     let day_part = strip_time(text)?;
-    if let [y1, y2, y3, y4, b'-', m1, m2, b'-', d1, d2] = *day_part.as_bytes() {
-        return plain_day([y1, y2, y3, y4], [m1, m2], [d1, d2]);
+    if let Some(day) = plain_day(day_part) {
+        return Some(day);
     }
     let span = |first: Date, last: Date, precision| Some(DateRange { first, last, precision });
     let day = |d: Option<Date>| d.and_then(|d| span(d, d, Precision::Day));
@@ -105,12 +110,13 @@ fn single(text: &str) -> Option<DateRange> {
 }
 
 /// A day written `YYYY-MM-DD`, as nearly all are.
-fn plain_day(year: [u8; 4], month: [u8; 2], day: [u8; 2]) -> Option<DateRange> {
+fn plain_day(text: &str) -> Option<DateRange> {
+    let [y1, y2, y3, y4, b'-', m1, m2, b'-', d1, d2] = *text.as_bytes() else { return None };
     let number = |digits: &[u8]| {
         let digit = |n: Option<i16>, b: &u8| Some(n? * 10 + i16::from(b.is_ascii_digit().then(|| b - b'0')?));
         digits.iter().fold(Some(0), digit)
     };
-    let (year, month, day) = (number(&year)?, number(&month)?, number(&day)?);
+    let (year, month, day) = (number(&[y1, y2, y3, y4])?, number(&[m1, m2])?, number(&[d1, d2])?);
     let date = Date::new(year, month as i8, day as i8).ok()?;
     Some(DateRange { first: date, last: date, precision: Precision::Day })
 }

@@ -7,11 +7,8 @@
 
 use std::hash::BuildHasher;
 
-use hashbrown::{DefaultHashBuilder, HashTable};
-use rayon::prelude::*;
-
-use super::batch::Batch;
 use super::visits::PARTS;
+use hashbrown::{DefaultHashBuilder, HashTable};
 
 /// Rows after which a part forgets the places that were seen least, once it holds as many.
 const WINDOW: u64 = 32_768;
@@ -38,7 +35,7 @@ struct Entry {
 
 /// One part of the places, by cell.
 #[derive(Default)]
-struct Part {
+pub(super) struct Part {
     hasher: DefaultHashBuilder,
     entries: HashTable<Entry>,
     rows: u64,
@@ -46,7 +43,7 @@ struct Part {
 }
 
 impl Part {
-    fn add(&mut self, (x, y): (f64, f64)) {
+    pub(super) fn add(&mut self, (x, y): (f64, f64)) {
         let (x, y) = ((x + 0.0).to_bits(), (y + 0.0).to_bits());
         let (hasher, missed) = (&self.hasher, self.window);
         let entry = self.entries.entry(
@@ -69,11 +66,9 @@ impl Part {
 pub(super) struct Piles([Part; PARTS]);
 
 impl Piles {
-    /// Counts the kept rows of batches in their order.
-    pub(super) fn count(&mut self, batches: &[&Batch]) {
-        self.0.par_iter_mut().enumerate().for_each(|(p, part)| {
-            batches.iter().flat_map(|b| &b.placed[p]).for_each(|row| part.add(row.xy));
-        });
+    /// The parts, each for the places of one part of the cells.
+    pub(super) fn parts(&mut self) -> &mut [Part] {
+        &mut self.0
     }
 
     /// The largest piles of two records and more, in an order that does not depend on that of the rows.

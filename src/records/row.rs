@@ -58,3 +58,9 @@ pub struct Fields<'a> {
     /// Columns named in `keep`, in the plan's order, then those in `leave_out`.
     pub filters: &'a [&'a str],
 }
+
+/// Text without the white space around it; nearly all has none.
+pub(super) fn trimmed(text: &str) -> &str {
+    let plain = |end: Option<&u8>| end.is_none_or(u8::is_ascii_graphic);
+    if plain(text.as_bytes().first()) && plain(text.as_bytes().last()) { text } else { text.trim() }
+}

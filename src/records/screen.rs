@@ -2,7 +2,7 @@
 
 use super::dates::{DateRange, Precision};
 use super::ledger::Rule;
-use super::row::{Fields, Place};
+use super::row::{Fields, Place, trimmed};
 use super::settings::{ColumnValues, RecordsPlan};
 
 /// What is left of a row that passed.
@@ -35,7 +35,7 @@ impl Radius {
     }
 
     fn read(text: &str) -> Self {
-        let text = text.trim();
+        let text = trimmed(text);
         match text.parse::<f64>() {
             _ if text.is_empty() => Self::Unknown,
             Ok(m) if m > 0.0 && m.is_finite() => Self::Metres(m),
@@ -80,7 +80,7 @@ pub fn screen(
 
 /// The row's date, from its date column or else from year, month and day.
 pub fn date_of(fields: &Fields) -> Option<DateRange> {
-    if !fields.date.trim().is_empty() {
+    if !trimmed(fields.date).is_empty() {
         return DateRange::parse(fields.date);
     }
     let [y, m, d] = fields.year_month_day.map(str::trim);
@@ -116,6 +116,7 @@ fn names(filter: &ColumnValues, value: &str) -> bool {
 /// Why the record is an absence; `None` when it is a presence.
 fn absent(fields: &Fields) -> Option<String> {
     if !fields.status.is_empty()
+        && !fields.status.eq_ignore_ascii_case("present")
         && ["absent", "notdetected"].iter().any(|w| folded(fields.status).eq(w.chars()))
     {
         return Some(format!("status {}", fields.status));
@@ -130,7 +131,7 @@ fn coordinates(place: Place, degrees: bool) -> Result<(f64, f64), (Rule, String)
         Place::Missing => return Err((Rule::NoCoordinate, String::new())),
         Place::Point(x, y) => (x, y),
         Place::Text { x, y } => {
-            let (x, y) = (x.trim(), y.trim());
+            let (x, y) = (trimmed(x), trimmed(y));
             if x.is_empty() || y.is_empty() {
                 return Err((Rule::NoCoordinate, String::new()));
             }

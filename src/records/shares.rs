@@ -13,19 +13,33 @@ pub(super) fn weight(visit: &Visit, count: Count) -> f64 {
 
 /// Weight by observer; 0 is the unknown.
 pub(super) fn by_observer(visits: &[Visit], count: Count) -> BTreeMap<u32, f64> {
-    let mut by: BTreeMap<u32, f64> = BTreeMap::new();
-    visits.iter().for_each(|v| *by.entry(v.key.1).or_insert(0.0) += weight(v, count));
-    by
+    let mut by = Vec::new();
+    visits.iter().for_each(|v| add(&mut by, v.key.1, weight(v, count)));
+    numbered(&by)
+}
+
+/// Adds to the weight of a number.
+fn add(by: &mut Vec<f64>, number: u32, weight: f64) {
+    let number = number as usize;
+    if number >= by.len() {
+        by.resize(number + 1, 0.0);
+    }
+    by[number] += weight;
+}
+
+/// The numbers that weigh anything.
+fn numbered(by: &[f64]) -> BTreeMap<u32, f64> {
+    by.iter().enumerate().filter(|(_, w)| **w > 0.0).map(|(n, w)| (n as u32, *w)).collect()
 }
 
 /// The data sets of a visit, with the share of its records in each.
 pub(super) fn datasets_of(sorted: &Sorted, visit: usize) -> Vec<(u32, f64)> {
-    let (v, number) = (&sorted.visits[visit], sorted.numbers[visit]);
+    let v = &sorted.visits[visit];
     let all = f64::from(v.records);
     let mut first = v.records;
     let mut shares = Vec::with_capacity(1);
     if !sorted.others.is_empty() {
-        for ((_, dataset), records) in sorted.others.range((number, 0)..=(number, u32::MAX)) {
+        for ((_, dataset), records) in sorted.others.range((v.number, 0)..=(v.number, u32::MAX)) {
             shares.push((*dataset, f64::from(*records) / all));
             first -= records;
         }
@@ -37,13 +51,13 @@ pub(super) fn datasets_of(sorted: &Sorted, visit: usize) -> Vec<(u32, f64)> {
 
 /// Weight by data set; a visit with records of several is divided among them.
 pub(super) fn by_dataset(sorted: &Sorted, count: Count) -> BTreeMap<u32, f64> {
-    let mut by: BTreeMap<u32, f64> = BTreeMap::new();
+    let mut by = Vec::new();
     for (i, visit) in sorted.visits.iter().enumerate() {
         for (dataset, share) in datasets_of(sorted, i) {
-            *by.entry(dataset).or_insert(0.0) += weight(visit, count) * share;
+            add(&mut by, dataset, weight(visit, count) * share);
         }
     }
-    by
+    numbered(&by)
 }
 
 /// Inverse Simpson number.

@@ -9,6 +9,8 @@ use crate::units::Metres;
 /// Finds the nearest inside cell within a distance.
 pub struct Snapper {
     tree: KdTree<f64, u32, Vec<f64>>,
+    /// Smallest and largest of each coordinate in the tree.
+    reached: Vec<(f64, f64)>,
     reach: f64,
     /// Squared distance between coordinates within which the centre of a cell in reach must lie.
     around: f64,
@@ -22,16 +24,19 @@ impl Snapper {
             Metric::Geodesic => 3,
         };
         let mut tree = KdTree::new(dimensions);
+        let mut reached = vec![(f64::INFINITY, f64::NEG_INFINITY); dimensions];
         for cell in (0..region.len()).filter(|&c| at_rim(region, c)) {
             let (x, y) = region.centre(cell);
-            tree.add(point(region, x, y), cell as u32).expect("centres are finite");
+            let at = point(region, x, y);
+            reached.iter_mut().zip(&at).for_each(|(r, v)| *r = (r.0.min(*v), r.1.max(*v)));
+            tree.add(at, cell as u32).expect("centres are finite");
         }
         let widest = (0..region.grid().rows)
             .map(|r| region.grid().cell_sides(r))
             .fold(0.0, |m: f64, (w, h)| m.max(w.hypot(h)));
         let unit = region.grid().metres_per_unit();
         let around = (reach.get() + widest) / unit * 1.01;
-        Self { tree, reach: reach.get(), around: around * around }
+        Self { tree, reached, reach: reach.get(), around: around * around }
     }
 
     /// The nearest inside cell, when it is within reach of the place (to its edge, not its centre).
@@ -39,7 +44,12 @@ impl Snapper {
         if !x.is_finite() || !y.is_finite() {
             return None;
         }
-        let near = self.tree.within(&point(region, x, y), self.around, &squared_euclidean).ok()?;
+        let at = point(region, x, y);
+        let beyond = at.iter().zip(&self.reached).map(|(v, r)| v - v.max(r.0).min(r.1));
+        if beyond.map(|d| d * d).sum::<f64>() > self.around {
+            return None; // farther than any cell of the tree can be near
+        }
+        let near = self.tree.within(&at, self.around, &squared_euclidean).ok()?;
         near.iter()
             .map(|(_, cell)| (to_cell(region, **cell as usize, x, y), **cell as usize))
             .min_by(|a, b| a.0.total_cmp(&b.0).then(a.1.cmp(&b.1)))

@@ -12,6 +12,8 @@ use rayon::prelude::*;
 use super::batch::{Batch, Placed};
 use super::dates::DateRange;
 use super::names::Names;
+use super::piles::Piles;
+use super::row::trimmed;
 
 /// Parts in which visits are counted.
 pub(super) const PARTS: usize = 8;
@@ -37,6 +39,8 @@ pub(super) struct KeptRow {
 
 #[derive(Clone, Copy)]
 pub(super) struct Visit {
+    /// The number under which it was gathered.
+    pub(super) number: u32,
     pub(super) key: VisitKey,
     pub(super) records: u32,
     pub(super) dataset: u32,
@@ -75,7 +79,7 @@ impl Part {
 
     fn open(&mut self, hash: u64, key: VisitKey, dataset: u32, uncertainty: f32) -> u32 {
         let n = self.found.len() as u32;
-        self.found.push(Visit { key, records: 0, dataset, uncertainty, offset: [0; 2] });
+        self.found.push(Visit { number: n, key, records: 0, dataset, uncertainty, offset: [0; 2] });
         let (hasher, found) = (&self.hasher, &self.found);
         self.numbers.insert_unique(hash, n, |&n| hasher.hash_one(found[n as usize].key));
         n
@@ -90,11 +94,13 @@ pub(super) struct Numbered {
     pub(super) line: u64,
 }
 
-/// Counts the rows of batches, in their order, all parts at once; `keep`: remembers each row.
-pub(super) fn count(parts: &mut [Part], batches: &[Numbered], keep: bool) {
-    parts.par_iter_mut().enumerate().for_each(|(p, part)| {
+/// Counts the visits and the places of batches, in their order, all parts at once; `keep`: remembers each
+/// row.
+pub(super) fn count(parts: &mut [Part], piles: &mut Piles, batches: &[Numbered], keep: bool) {
+    parts.par_iter_mut().zip(piles.parts()).enumerate().for_each(|(p, (part, places))| {
         for numbered in batches {
             for row in &numbered.batch.placed[p] {
+                places.add(row.xy);
                 let observer = numbered.observers[row.observer as usize];
                 let visit = part.add(row, observer, numbered.datasets[row.dataset as usize]);
                 if keep {
@@ -110,8 +116,6 @@ pub(super) fn count(parts: &mut [Part], batches: &[Numbered], keep: bool) {
 pub(super) struct Sorted {
     /// The visits; observers and data sets are numbered by the order of their names.
     pub(super) visits: Vec<Visit>,
-    /// The number under which each was gathered.
-    pub(super) numbers: Vec<u32>,
     /// Records of a visit (by the number under which it was gathered) in other data sets than its first.
     pub(super) others: BTreeMap<(u32, u32), u32>,
     /// Kept rows with their visit's place in the order.
@@ -121,54 +125,46 @@ pub(super) struct Sorted {
 /// Brings the parts together.
 pub(super) fn sorted(parts: Vec<Part>, observers: &Names, datasets: &Names) -> Sorted {
     let (observers, datasets) = (observers.order(), datasets.order());
-    let mut all: Vec<Visit> = Vec::with_capacity(parts.iter().map(|p| p.found.len()).sum());
+    let mut visits: Vec<Visit> = Vec::with_capacity(parts.iter().map(|p| p.found.len()).sum());
     let (mut others, mut kept) = (BTreeMap::new(), Vec::new());
     for part in parts {
-        let first = all.len() as u32;
-        all.extend(part.found.iter().map(|v| {
+        let first = visits.len() as u32;
+        visits.extend(part.found.iter().map(|v| {
             let key = (v.key.0, observers[v.key.1 as usize], v.key.2);
-            Visit { key, dataset: datasets[v.dataset as usize], ..*v }
+            Visit { number: v.number + first, key, dataset: datasets[v.dataset as usize], ..*v }
         }));
         others.extend(part.others.iter().map(|((v, d), n)| ((v + first, datasets[*d as usize]), *n)));
         kept.extend(part.kept.iter().map(|k| KeptRow { visit: k.visit + first, ..*k }));
     }
-    let mut numbers: Vec<u32> = (0..all.len() as u32).collect();
-    numbers.par_sort_unstable_by_key(|&i| all[i as usize].key);
-    let mut place = vec![0; numbers.len()];
-    numbers.iter().enumerate().for_each(|(rank, &i)| place[i as usize] = rank as u32);
-    kept.iter_mut().for_each(|k: &mut KeptRow| k.visit = place[k.visit as usize]);
-    kept.sort_unstable_by_key(|k| (k.file, k.line));
-    let visits = numbers.iter().map(|&i| all[i as usize]).collect();
-    Sorted { visits, numbers, others, kept }
+    visits.par_sort_unstable_by_key(|v| v.key);
+    if !kept.is_empty() {
+        let mut place = vec![0; visits.len()];
+        visits.iter().enumerate().for_each(|(rank, v)| place[v.number as usize] = rank as u32);
+        kept.iter_mut().for_each(|k: &mut KeptRow| k.visit = place[k.visit as usize]);
+        kept.par_sort_unstable_by_key(|k| (k.file, k.line));
+    }
+    Sorted { visits, others, kept }
 }
 
 /// The outing (observer and date) of each visit, numbered by the first visit of each.
 pub(super) fn outings(visits: &[Visit]) -> Vec<u32> {
-    let key = |i: u32| (visits[i as usize].key.1, visits[i as usize].key.2, i);
-    let mut order: Vec<u32> = (0..visits.len() as u32).collect();
-    order.par_sort_unstable_by_key(|&i| key(i));
-    let mut first = vec![0; visits.len()];
-    for group in order.chunk_by(|&a, &b| (key(a).0, key(a).1) == (key(b).0, key(b).1)) {
-        group.iter().for_each(|&i| first[i as usize] = group[0]);
-    }
-    let mut next = 0;
-    let mut numbers = vec![0; visits.len()];
-    for i in 0..visits.len() {
-        let leader = first[i] as usize;
-        numbers[i] = if leader == i {
-            next += 1;
-            next - 1
-        } else {
-            numbers[leader]
-        };
-    }
-    numbers
+    let key = |v: &Visit| (v.key.1, v.key.2);
+    let hasher = DefaultHashBuilder::default();
+    let mut leaders: HashTable<(u32, u32)> = HashTable::new();
+    let of_leader = |&(leader, _): &(u32, u32)| key(&visits[leader as usize]);
+    let number = |(i, visit): (usize, &Visit)| {
+        let next = (i as u32, leaders.len() as u32);
+        let same = |known: &(u32, u32)| of_leader(known) == key(visit);
+        let rehash = |known: &(u32, u32)| hasher.hash_one(of_leader(known));
+        leaders.entry(hasher.hash_one(key(visit)), same, rehash).or_insert(next).get().1
+    };
+    visits.iter().enumerate().map(number).collect()
 }
 
 /// An observer list as a set: its names, trimmed, sorted, each once.
 pub(super) fn observer_set(text: &str) -> std::borrow::Cow<'_, str> {
     if !text.contains('|') {
-        return text.trim().into();
+        return trimmed(text).into();
     }
     let names: std::collections::BTreeSet<&str> =
         text.split('|').map(str::trim).filter(|n| !n.is_empty()).collect();

@@ -44,9 +44,7 @@ struct Ready {
     last: bool,
     /// Length of a line that was passed over; such a block holds no bytes.
     too_long: Option<u64>,
-    /// Whether all bytes are UTF-8.
-    is_text: bool,
-    /// Whether rows must be looked at for bytes that are no text.
+    /// Whether it was Latin-1 with bytes that are no text.
     doubtful: bool,
 }
 
@@ -57,25 +55,28 @@ struct Parsed<P> {
     open: Option<usize>,
 }
 
-/// Reads all rows; what deserves attention about the file is returned.
+/// Reads all rows; what deserves attention about the file is returned. Parts are taken while those after them
+/// are worked on.
 pub(in crate::gate) fn scan<W: Work>(
     source: &TextSource,
     head: Head,
     work: &W,
-    take: &mut dyn FnMut(Parts<W::Part>) -> Outcome<()>,
+    take: &mut (dyn FnMut(Parts<W::Part>) -> Outcome<()> + Send),
     observer: &dyn Observer,
 ) -> Outcome<Option<Diagnostic>> {
     let (dialect, width) = (head.dialect, head.width);
     let mut line = head.lines;
     let mut feed = Feed::new(source, head, observer);
     let mut queue = VecDeque::from(feed.round(1)?);
+    let mut done = Vec::new();
     while !queue.is_empty() {
         let round: Vec<Ready> = queue.drain(..queue.len().min(ROUND)).collect();
         let missing = ROUND.saturating_sub(queue.len());
         let parse = || -> Vec<_> { round.par_iter().map(|b| parse(b, dialect, width, work)).collect() };
-        let (parsed, fresh) = rayon::join(parse, || feed.round(missing));
+        let ahead = || rayon::join(parse, || feed.round(missing));
+        let (taken, (parsed, fresh)) = rayon::join(|| take(std::mem::take(&mut done)), ahead);
+        taken?;
         queue.extend(fresh?);
-        let mut done = Vec::with_capacity(round.len());
         let mut round = VecDeque::from(round);
         for parsed in parsed {
             let parsed = parsed?;
@@ -90,8 +91,8 @@ pub(in crate::gate) fn scan<W: Work>(
                 break;
             }
         }
-        take(done)?;
     }
+    take(done)?;
     Ok(feed.remark)
 }
 
@@ -102,7 +103,8 @@ fn parse<W: Work>(block: &Ready, dialect: Dialect, width: usize, work: &W) -> Ou
         parsed.lines = 1;
         work.unreadable(&mut parsed.part, 1, &format!("a line of {length} bytes"), 1);
     }
-    let text = if block.is_text { std::str::from_utf8(&block.bytes).ok() } else { None };
+    let text = std::str::from_utf8(&block.bytes).ok();
+    let doubtful = block.doubtful || text.is_none() || memchr::memchr(0, &block.bytes).is_some();
     let mut rows = Rows::new(&block.bytes, text, dialect);
     loop {
         let lines = match rows.step() {
@@ -121,7 +123,7 @@ fn parse<W: Work>(block: &Ready, dialect: Dialect, width: usize, work: &W) -> Ou
         if rows.len() != width {
             let why = format!("{} fields instead of {width}", rows.len());
             work.unreadable(&mut parsed.part, line, &why, lines);
-        } else if let Some(why) = block.doubtful.then(|| doubt(&rows)).flatten() {
+        } else if let Some(why) = doubtful.then(|| doubt(&rows)).flatten() {
             work.unreadable(&mut parsed.part, line, why, lines);
         } else {
             work.row(&mut parsed.part, line, &rows);
@@ -180,7 +182,7 @@ impl<'a> Feed<'a> {
                     self.observer.advance(length);
                     let too_long = Some(length);
                     let bytes = Vec::new();
-                    ready.push(Ready { bytes, last: false, too_long, is_text: true, doubtful: false });
+                    ready.push(Ready { bytes, last: false, too_long, doubtful: false });
                 }
             }
         }
@@ -202,7 +204,6 @@ impl<'a> Feed<'a> {
         }
         block.bytes.extend_from_slice(&next.bytes);
         block.last = next.last;
-        block.is_text &= next.is_text;
         block.doubtful |= next.doubtful;
         queue.push_front(block);
         Ok(true)
@@ -210,17 +211,16 @@ impl<'a> Feed<'a> {
 
     /// Settles what a block's bytes stand for.
     fn settle(&mut self, bytes: Vec<u8>, last: bool) -> Outcome<Ready> {
-        let is_text = std::str::from_utf8(&bytes).is_ok();
-        if self.encoding.is_none() && !(is_text && bytes.is_ascii()) {
+        if self.encoding.is_none() && !bytes.is_ascii() {
+            let is_text = std::str::from_utf8(&bytes).is_ok();
             self.encoding = Some(if is_text { Encoding::Utf8 } else { self.judge()? });
         }
-        let nul = memchr::memchr(0, &bytes).is_some();
         if self.encoding == Some(Encoding::Latin1) && !bytes.is_ascii() {
-            let doubtful = nul || !is_latin1(&bytes);
+            let doubtful = !is_latin1(&bytes);
             let bytes = decode(&bytes).into_owned().into_bytes();
-            return Ok(Ready { bytes, last, too_long: None, is_text: true, doubtful });
+            return Ok(Ready { bytes, last, too_long: None, doubtful });
         }
-        Ok(Ready { bytes, last, too_long: None, is_text, doubtful: nul || !is_text })
+        Ok(Ready { bytes, last, too_long: None, doubtful: false })
     }
 
     /// Looks through the whole text once for what it is written in.
