@@ -7,7 +7,7 @@ use crate::grid::CrsKind;
 use crate::records::{Collector, Content, Place, RecordsPlan, Row, Screener};
 
 use super::crs;
-use super::features::{no_crs, open_layer};
+use super::features::{forget_errors, geometry_of, last_error, no_crs, open_layer};
 use super::files::Files;
 use super::layout::{Layout, Named, Point, Texts};
 
@@ -48,6 +48,7 @@ pub(super) fn read(
     };
     observer.begin(&format!("read {file}"), layer.try_feature_count());
     let mut batch = screener.batch(index, number);
+    forget_errors();
     for feature in layer.features() {
         let texts = Attributes((0..names.len()).map(|i| text(&feature, i)).collect());
         let line = feature.fid().unwrap_or(0);
@@ -62,17 +63,28 @@ pub(super) fn read(
             screener.push(&mut batch, &Row { line, content: Content::Fields(fields) });
         });
         if batch.waiting() >= BATCH {
+            unharmed(file)?;
             collector.take(screener, std::mem::replace(&mut batch, screener.batch(index, number)))?;
+            forget_errors(); // a place that cannot be turned is none of the file's
         }
         observer.advance(1);
     }
     observer.end();
+    unharmed(file)?;
     collector.take(screener, batch)
+}
+
+/// Whether features came without an error so far: the driver ends at one as it does at the file's end.
+fn unharmed(file: &str) -> Outcome<()> {
+    last_error().map_or(Ok(()), |error| {
+        let text = format!("cannot be read to its end: {error}");
+        Err(Diagnostic::input("cut_off", file, text).cure("check that the file is whole").into())
+    })
 }
 
 /// Where a feature lies; only points have a place.
 fn place<'a>(feature: &Feature, file: &str) -> Outcome<Place<'a>> {
-    let Some(geometry) = feature.geometry().filter(|g| !g.is_empty()) else { return Ok(Place::Missing) };
+    let Some(geometry) = geometry_of(feature) else { return Ok(Place::Missing) };
     let name = geometry.geometry_name();
     let point = if name == "POINT" {
         geometry.get_point(0)
