@@ -10,6 +10,7 @@ use super::archive::{self, Archive};
 use super::container::{Container, Member, is_archive_folder};
 use super::files::Files;
 use super::parquet_in::{self, is_parquet};
+use super::sources::Peek;
 use super::text::{Form, TextSource};
 use super::unpack::{Stream, broken, maybe_gzip};
 use super::zipped::is_zip;
@@ -58,6 +59,23 @@ pub(super) fn kind(path: &Path, file: &str, table: Option<&str>) -> Outcome<Kind
     Ok(if table::is_text(path) { Kind::Text } else { Kind::Vector })
 }
 
+/// What a look at packed records shows; `None` for what is not packed.
+///
+/// # Errors
+/// When a zip file or a folder cannot be used for records.
+pub(super) fn peek(path: &Path, file: &str, table: Option<&str>) -> Outcome<Option<Peek>> {
+    let look = |kind, count| Peek { file: file.into(), kind, crs: String::new(), extent: None, count };
+    Ok(match kind(path, file, table)? {
+        Kind::Text | Kind::Vector => None,
+        Kind::Zipped(..) => Some(look("text", None)),
+        Kind::Archive(..) => Some(look("archive", None)),
+        Kind::Parquet(parts) => {
+            let rows = |path: &PathBuf| Ok(parquet_in::Table::open(path, file)?.rows());
+            Some(look("parquet", Some(parts.iter().map(rows).sum::<Outcome<u64>>()?)))
+        }
+    })
+}
+
 /// The table in a zip file that is no archive: the one named, or the only one.
 fn packed(container: Container, table: Option<&str>) -> Outcome<Kind> {
     let members = container.members();
@@ -79,6 +97,10 @@ fn packed(container: Container, table: Option<&str>) -> Outcome<Kind> {
 }
 
 fn several(container: &Container, members: &[Member], table: Option<&str>) -> Diagnostic {
+    if members.iter().any(|m| m.name == "xl/workbook.xml" || m.name == "content.xml") {
+        return Diagnostic::input("spreadsheet", container.file.as_str(), "is a spreadsheet")
+            .cure("save the sheet of records as delimited text (CSV in UTF-8) and give that");
+    }
     let shown: Vec<String> = members.iter().take(20).map(|m| format!("`{}`", m.name)).collect();
     let held = if shown.is_empty() { "nothing".into() } else { shown.join(", ") };
     let text = match table {
