@@ -1,9 +1,11 @@
 //! Records in a Darwin Core archive: rows of one table, each completed by the row it belongs to.
 
+use std::sync::atomic::{AtomicU64, Ordering};
+
 use hashbrown::HashMap;
 
 use crate::diag::{Diagnostic, Observer, Outcome};
-use crate::records::{Batch, Collector, Content, RecordsPlan, Row, Screener};
+use crate::records::{Batch, Collector, Content, Quotes, RecordsPlan, Row, Screener};
 
 use super::archive::{Archive, Field, Table};
 use super::container::Container;
@@ -30,7 +32,8 @@ pub(super) fn read(
     };
     for location in &archive.records.locations {
         let name = container.place(location);
-        let text = text(container, location, &name, &archive.records);
+        let mut text = text(container, location, &name, &archive.records);
+        requote(&mut text, plan.sources[source].quotes);
         let head = Head::open(&text)?;
         let file = collector.open(&name);
         collector.found(file, &layout.matches);
@@ -38,7 +41,18 @@ pub(super) fn read(
         let remark = scan(&text, head, &work, &mut |parts| collector.absorb(parts), observer)?;
         collector.remarks(remark);
     }
+    collector.remarks(parents.and_then(|(parents, _)| lost(container, parents.lost.into_inner())));
     Ok(())
+}
+
+fn lost(container: &Container, records: u64) -> Option<Diagnostic> {
+    let text = format!(
+        "{records} records belong to a row of the core that is not there: they lack what it would say"
+    );
+    (records > 0).then(|| {
+        Diagnostic::input("core_rows", container.file.as_str(), text)
+            .cure("mend the core, or download the archive again")
+    })
 }
 
 /// A table's text at one location.
@@ -52,6 +66,13 @@ fn text<'a>(container: &'a Container, location: &'a str, name: &'a str, table: &
         columns: last.map_or(0, |i| i + 1),
     };
     TextSource { name, open: Box::new(move || container.stream(location)), form }
+}
+
+/// The plan's word on quotes goes before the description's.
+fn requote(text: &mut TextSource, quotes: Option<Quotes>) {
+    if let (Form::Given { dialect, .. }, Some(quotes)) = (&mut text.form, quotes) {
+        dialect.quote = (quotes == Quotes::Double).then_some(b'"');
+    }
 }
 
 /// The columns of the records, and those of the core for what the records do not say themselves.
@@ -76,6 +97,8 @@ struct Parents {
     /// Where each field of the core stands among those kept.
     places: Vec<Option<usize>>,
     rows: HashMap<Box<str>, Box<[Box<str>]>>,
+    /// Records whose row is not there.
+    lost: AtomicU64,
 }
 
 impl Parents {
@@ -88,7 +111,7 @@ impl Parents {
     ) -> Outcome<(Self, Option<Diagnostic>)> {
         let mut places = vec![None; core.columns.len()];
         wanted.iter().enumerate().for_each(|(n, field)| places[*field] = Some(n));
-        let mut all = Self { places, rows: HashMap::new() };
+        let mut all = Self { places, rows: HashMap::new(), lost: AtomicU64::new(0) };
         let (mut twice, mut unreadable, mut first) = (0_u64, 0_u64, None);
         for location in &core.locations {
             let name = container.place(location);
@@ -140,10 +163,13 @@ struct Core<'a> {
     wanted: &'a [usize],
 }
 
+/// The identifier of a row and the fields that are kept of it.
+type CoreRow = (Box<str>, Box<[Box<str>]>);
+
 /// Rows of a block of the core.
 #[derive(Default)]
 struct CorePart {
-    rows: Vec<(Box<str>, Box<[Box<str>]>)>,
+    rows: Vec<CoreRow>,
     unreadable: u64,
 }
 
@@ -211,11 +237,17 @@ impl Work for Screening<'_> {
 
     fn row(&self, batch: &mut Batch, line: u64, rows: &Rows) {
         let parent = self.parents.and_then(|(parents, id)| {
-            parents.rows.get(rows.field(*id).trim()).map(|row| (parents, row.as_ref()))
+            let found = parents.rows.get(rows.field(*id).trim());
+            parents.lost.fetch_add(u64::from(found.is_none()), Ordering::Relaxed);
+            found.map(|row| (parents, row.as_ref()))
         });
         self.layout.fields(&Joined { rows, parent }, None, |fields| {
             self.screener.push(batch, &Row { line, content: Content::Fields(fields) });
         });
+    }
+
+    fn swallowed(&self, batch: &mut Batch, line: u64, lines: u64) {
+        self.screener.swallowed(batch, line, lines);
     }
 
     fn unreadable(&self, batch: &mut Batch, line: u64, why: &str, lines: u64) {

@@ -59,6 +59,10 @@ impl Work for Screening<'_> {
         });
     }
 
+    fn swallowed(&self, batch: &mut Batch, line: u64, lines: u64) {
+        self.screener.swallowed(batch, line, lines);
+    }
+
     fn unreadable(&self, batch: &mut Batch, line: u64, why: &str, lines: u64) {
         self.screener.push(batch, &Row { line, content: Content::Unreadable(why, lines) });
     }

@@ -44,11 +44,14 @@ pub struct Capped {
     pub heaviest: Vec<(f64, f64)>,
 }
 
+/// The groups of a unit with its share in each.
+type Shares<'a> = Box<dyn Fn(&Unit) -> Vec<(u32, f64)> + 'a>;
+
 /// One kind of groups: the cap, and the groups of each unit with their shares in it.
 struct Kind<'a> {
     what: &'static str,
     cap: f64,
-    of: Box<dyn Fn(&Unit) -> Vec<(u32, f64)> + 'a>,
+    of: Shares<'a>,
 }
 
 impl Groups {
