@@ -11,8 +11,8 @@ use trodden::output::{
     finish, held_out_csv,
 };
 use trodden::plan::{GridPlan, StudyPlan, read, resolved};
-use trodden::records::{Detail, Rule, Sink};
-use trodden::study::{Needs, Notes, gather, run};
+use trodden::records::{Detail, Match, Rule, Sink};
+use trodden::study::{Gathered, Needs, Notes, gather, run};
 use trodden::units::{Bytes, Length};
 
 use super::args::{BuildArgs, CheckArgs, Common, CompareArgs};
@@ -21,10 +21,10 @@ use super::render::{Voice, result};
 use super::write::{DroppedTable, Run, details, manifest, surface};
 
 /// A plan read from disk, and the folder its paths are relative to.
-struct Opened {
-    plan: StudyPlan,
-    name: String,
-    folder: PathBuf,
+pub struct Opened {
+    pub plan: StudyPlan,
+    pub name: String,
+    pub folder: PathBuf,
 }
 
 fn open(path: &Path) -> Outcome<Opened> {
@@ -76,13 +76,24 @@ pub fn check(args: &CheckArgs, common: &Common, voice: Voice) -> Outcome<()> {
             result(&pretty(&check_json(&Checked { problems: problems.0.clone(), ..Checked::default() })));
         }
     })?;
+    let (checked, outcome) = look(&opened, common, voice);
+    if common.json {
+        result(&pretty(&check_json(&checked)));
+    } else if !common.quiet {
+        result(&super::write::check_words(&opened.name, &opened.plan, &checked));
+    }
+    outcome
+}
+
+/// Reads all that a plan asks for and says what is there; fits nothing.
+pub fn look(opened: &Opened, common: &Common, voice: Voice) -> (Checked, Outcome<()>) {
     let plan = &opened.plan;
     let files = Files::new(&opened.folder);
     let bars = Bars::new(voice.shows_progress());
     let needs = Needs { sources: &files, observer: &bars, memory: memory(common), kept: false };
     let mut notes = Notes::default();
     let target = opened.folder.join(&plan.output.folder);
-    let place = own_inputs(&opened, &target).and_then(|()| Staging::open(&target).map(drop));
+    let place = own_inputs(opened, &target).and_then(|()| Staging::open(&target).map(drop));
     let gathered = gather(plan, &needs, &mut Nowhere, &mut notes);
     let outcome = gathered.and_then(|g| trodden::study::ready(plan, &g).map(|()| g));
     let outcome = match (outcome, place) {
@@ -95,25 +106,28 @@ pub fn check(args: &CheckArgs, common: &Common, voice: Voice) -> Outcome<()> {
     };
     bars_end(&bars);
     let inputs = looks(plan, &files, outcome.as_ref().ok().map(|g| g.records.ledger.read()));
-    let (problems, records) = match &outcome {
-        Ok(g) => (Vec::new(), Some(g.records.ledger.lines())),
-        Err(p) => (p.0.clone(), None),
+    let (problems, records, columns) = match &outcome {
+        Ok(g) => (Vec::new(), Some(g.records.clone()), columns(g)),
+        Err(p) => (p.0.clone(), None, Vec::new()),
     };
     let checked = Checked {
         grid: notes.grid.clone(),
         inputs,
+        records,
+        columns,
         memory_bytes: notes.cost.map(|c| c.memory.0),
         seconds: notes.cost.map(|c| c.seconds),
         problems,
         warnings: notes.warnings.0.clone(),
     };
     warn(&notes.warnings, voice);
-    if common.json {
-        result(&pretty(&check_json(&checked)));
-    } else if !common.quiet {
-        result(&super::write::check_words(&opened.name, plan, &checked, records.as_deref()));
-    }
-    outcome.map(drop)
+    (checked, outcome.map(drop))
+}
+
+/// How the columns of each file of records were found.
+fn columns(gathered: &Gathered) -> Vec<(String, Vec<Match>)> {
+    let named = |(file, found): &(u32, Vec<Match>)| (gathered.files[*file as usize].clone(), found.clone());
+    gathered.matches.iter().map(named).collect()
 }
 
 /// A look at every input, the grid's first, each file and table once.
@@ -131,7 +145,7 @@ fn looks(plan: &StudyPlan, files: &Files, rows: Option<u64>) -> Vec<CheckedInput
     }
     let look = |(file, table): (&str, Option<&str>)| {
         let p = Sources::peek(files, file, table).ok()?;
-        let text = p.kind == "text";
+        let text = !["raster", "vector"].contains(&p.kind);
         let single = plan.records.files().count() == 1;
         Some(CheckedInput {
             file: table.map_or_else(|| p.file.clone(), |t| format!("{}, {t}", p.file)),

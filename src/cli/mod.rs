@@ -2,8 +2,10 @@
 
 mod args;
 mod commands;
+mod init;
 mod progress;
 mod render;
+mod thin;
 mod write;
 
 use std::process::ExitCode;
@@ -49,8 +51,10 @@ fn run(arguments: &Arguments, voice: Voice) -> trodden::diag::Outcome<()> {
         drop(rayon::ThreadPoolBuilder::new().num_threads(threads.get()).build_global());
     }
     match &arguments.command {
+        Command::Init(a) => init::init(a, &arguments.common, voice),
         Command::Check(a) => commands::check(a, &arguments.common, voice),
         Command::Build(a) => commands::build(a, &arguments.common, voice),
+        Command::Thin(a) => thin::thin(a, &arguments.common, voice),
         Command::Compare(a) => commands::compare(a, &arguments.common, voice),
     }
 }

@@ -13,7 +13,7 @@ use trodden::output::{
     finish, held_out_units_csv, kept_csv, manifest_json,
 };
 use trodden::plan::StudyPlan;
-use trodden::records::{Detail, Rule, Sink};
+use trodden::records::{Detail, Match, Records, Rule, Sink};
 
 /// Value of cells outside the region.
 const NODATA: f64 = -9999.0;
@@ -242,7 +242,7 @@ fn opening(finding: &Finding) -> String {
     let r = &finding.records;
     let g = finding.region.grid();
     format!(
-        "{}\n  grid      {} x {} cells of {}, {} inside, {}\n  records   {} read, {} kept, {} dropped; {} {} in {} places\n  \
+        "{}\n  grid      {} x {} cells of {}, {} inside, {}\n  records   {} read, {} kept, {} dropped; {} {} in {} places\n{}  \
          held out  {} in {} folds; intervals from {} blocks of {}{}\n\n{}\n",
         finding.title,
         g.columns,
@@ -253,9 +253,10 @@ fn opening(finding: &Finding) -> String {
         r.ledger.read(),
         r.ledger.kept(),
         r.ledger.read() - r.ledger.kept(),
-        r.weight(),
+        weight(r.weight()),
         r.count.word(),
         r.places,
+        caps(r).iter().map(|line| format!("            {line}\n")).collect::<String>(),
         finding.split().word(),
         finding.folds.count,
         finding.blocks.count,
@@ -293,8 +294,77 @@ pub fn compare_words(finding: &Finding, target: &Path, files: usize) -> String {
     )
 }
 
+/// How the columns of a file were found.
+fn columns(file: &str, found: &[Match]) -> Option<String> {
+    let one = |m: &Match| match m.how() {
+        "" => format!("{} `{}`", m.role, m.column),
+        how => format!("{} `{}` ({how}: `{}` was looked for)", m.role, m.column, m.wanted),
+    };
+    let all: Vec<String> = found.iter().map(one).collect();
+    (!all.is_empty()).then(|| format!("  columns  {file}: {}", all.join(", ")))
+}
+
+/// What the records are, line by line.
+fn seen(r: &Records) -> Vec<String> {
+    let mut lines = r.ledger.lines();
+    if let Some([w, s, e, n]) = r.reach.extent {
+        lines.push(format!("span x {w:.4} to {e:.4}, y {s:.4} to {n:.4} in the grid's CRS"));
+    }
+    if let Some((first, last)) = r.reach.days {
+        let [day, range, month, year, none] = r.dates;
+        lines.push(format!(
+            "dated {first} to {last} (of the rows read, {day} to the day, {range} as ranges, {month} to the month, \
+             {year} to the year, {none} without a readable date)"
+        ));
+    }
+    lines.push(format!(
+        "by {} observers or parties, from {} data sets; {} {} in {} places",
+        r.reach.observers,
+        r.reach.datasets,
+        weight(r.weight()),
+        r.count.word(),
+        r.places
+    ));
+    lines.extend(caps(r));
+    lines
+}
+
+/// A weight without digits that mean nothing.
+fn weight(weight: f64) -> String {
+    if weight.fract() == 0.0 { weight.to_string() } else { format!("{weight:.1}") }
+}
+
+/// What caps did, a line each.
+fn caps(r: &Records) -> Vec<String> {
+    r.capped
+        .iter()
+        .map(|c| {
+            let what = if c.what == "observer" { "observers" } else { "data sets" };
+            let heaviest: Vec<String> = c
+                .heaviest
+                .iter()
+                .take(5)
+                .map(|(units, each)| format!("{} count {each:.3} each", weight(*units)))
+                .collect();
+            let shown =
+                if heaviest.is_empty() { String::new() } else { format!(": {}", heaviest.join(", ")) };
+            let unknown = if c.unknown > 0.0 {
+                format!("; {:.1} % is nobody's and not capped", c.unknown * 100.0)
+            } else {
+                String::new()
+            };
+            format!(
+                "capped at {} %: {} of {} {what} weigh less{shown}{unknown}",
+                weight(c.cap * 100.0),
+                c.groups.1,
+                c.groups.0
+            )
+        })
+        .collect()
+}
+
 /// What `check` says.
-pub fn check_words(name: &str, plan: &StudyPlan, checked: &Checked, ledger: Option<&[String]>) -> String {
+pub fn check_words(name: &str, plan: &StudyPlan, checked: &Checked) -> String {
     let mut lines = vec![format!("{name}: {}", plan.title)];
     if let Some((g, inside)) = &checked.grid {
         let inside = inside.map_or(String::new(), |n| format!(", {n} inside"));
@@ -309,7 +379,12 @@ pub fn check_words(name: &str, plan: &StudyPlan, checked: &Checked, ledger: Opti
     }
     for CheckedInput { file, kind, crs, count, .. } in &checked.inputs {
         let count = count.map_or(String::new(), |n| {
-            format!(", {n} {}", if *kind == "raster" { "cells" } else { "features" })
+            let what = match *kind {
+                "raster" => "cells",
+                "vector" => "features",
+                _ => "rows",
+            };
+            format!(", {n} {what}")
         });
         let turned = match &checked.grid {
             Some((g, _)) if !crs.is_empty() && *crs != g.crs.label => {
@@ -320,9 +395,9 @@ pub fn check_words(name: &str, plan: &StudyPlan, checked: &Checked, ledger: Opti
         let crs = if crs.is_empty() { String::new() } else { format!(", {crs}{turned}") };
         lines.push(format!("  input    {file}: {kind}{crs}{count}"));
     }
-    for line in ledger.unwrap_or_default() {
-        lines.push(format!("  records  {line}"));
-    }
+    checked.columns.iter().for_each(|(file, found)| lines.extend(columns(file, found)));
+    let records = checked.records.iter().flat_map(seen);
+    lines.extend(records.map(|line| format!("  records  {line}")));
     for c in &plan.candidates {
         lines.push(format!("  would fit and check candidate {}", c.name));
     }

@@ -5,43 +5,40 @@ use std::sync::atomic::{AtomicU64, Ordering};
 use hashbrown::HashMap;
 
 use crate::diag::{Diagnostic, Observer, Outcome};
-use crate::records::{Batch, Collector, Content, Quotes, RecordsPlan, Row, Screener};
+use crate::records::{Content, Desk, Quotes, Row};
 
 use super::archive::{Archive, Field, Table};
 use super::container::Container;
 use super::layout::{Layout, Named, Slot, Texts};
+use super::record_files::Reading;
 use super::text::{Dialect, Form, Head, Rows, TextSource, Work, scan};
 
-/// Hands the records of an archive to the collector.
-pub(super) fn read(
-    container: &Container,
-    archive: &Archive,
-    (plan, source): (&RecordsPlan, usize),
-    (screener, collector): (&Screener, &mut Collector),
-    observer: &dyn Observer,
-) -> Outcome<()> {
+/// Hands the records of an archive on.
+pub(super) fn read<D: Desk>(container: &Container, archive: &Archive, to: &mut Reading<D>) -> Outcome<()> {
     let named = named(&archive.records, archive.core.as_ref());
-    let layout = Layout::find(&named, (plan, &plan.sources[source]), &container.file, false)?;
+    let layout = Layout::find(&named, (to.plan, to.source()), &container.file, false)?;
     let parents = match (&archive.core, archive.records.id) {
         (Some(core), Some(id)) => {
-            let (parents, twice) = Parents::read(container, core, layout.parents(), observer)?;
-            collector.remarks(twice);
+            let (parents, twice) = Parents::read(container, core, layout.parents(), to.observer)?;
+            twice.into_iter().for_each(|r| to.tray.remark(r));
             Some((parents, id))
         }
         _ => None,
     };
     for location in &archive.records.locations {
         let name = container.place(location);
-        let mut text = text(container, location, &name, &archive.records);
-        requote(&mut text, plan.sources[source].quotes);
+        let text = text((container, location), &name, &archive.records, to.source().quotes);
         let head = Head::open(&text)?;
-        let file = collector.open(&name);
-        collector.found(file, &layout.matches);
-        let work = Screening { screener, layout: &layout, parents: parents.as_ref(), at: (file, source) };
-        let remark = scan(&text, head, &work, &mut |parts| collector.absorb(parts), observer)?;
-        collector.remarks(remark);
+        let file = to.tray.open(&name);
+        to.tray.found(file, &layout.matches);
+        let at = (file, to.number);
+        let work = Handing { desk: to.desk, layout: &layout, parents: parents.as_ref(), at };
+        let tray = &mut *to.tray;
+        let remark = scan(&text, head, &work, &mut |parts| tray.take(parts), to.observer)?;
+        remark.into_iter().for_each(|r| to.tray.remark(r));
     }
-    collector.remarks(parents.and_then(|(parents, _)| lost(container, parents.lost.into_inner())));
+    let lost = parents.and_then(|(parents, _)| lost(container, parents.lost.into_inner()));
+    lost.into_iter().for_each(|r| to.tray.remark(r));
     Ok(())
 }
 
@@ -55,9 +52,19 @@ fn lost(container: &Container, records: u64) -> Option<Diagnostic> {
     })
 }
 
-/// A table's text at one location.
-fn text<'a>(container: &'a Container, location: &'a str, name: &'a str, table: &Table) -> TextSource<'a> {
-    let dialect = Dialect { separator: table.separator, terminator: table.line_end, quote: table.quote };
+/// A table's text at one location; `quotes` overrides the description.
+pub(super) fn text<'a>(
+    (container, location): (&'a Container, &'a str),
+    name: &'a str,
+    table: &Table,
+    quotes: Option<Quotes>,
+) -> TextSource<'a> {
+    let quote = match quotes {
+        None => table.quote,
+        Some(Quotes::None) => None,
+        Some(Quotes::Double) => Some(b'"'),
+    };
+    let dialect = Dialect { separator: table.separator, terminator: table.line_end, quote };
     let last = table.columns.iter().filter_map(|c| c.index).chain(table.id).max();
     let form = Form::Given {
         dialect,
@@ -66,13 +73,6 @@ fn text<'a>(container: &'a Container, location: &'a str, name: &'a str, table: &
         columns: last.map_or(0, |i| i + 1),
     };
     TextSource { name, open: Box::new(move || container.stream(location)), form }
-}
-
-/// The plan's word on quotes goes before the description's.
-fn requote(text: &mut TextSource, quotes: Option<Quotes>) {
-    if let (Form::Given { dialect, .. }, Some(quotes)) = (&mut text.form, quotes) {
-        dialect.quote = (quotes == Quotes::Double).then_some(b'"');
-    }
 }
 
 /// The columns of the records, and those of the core for what the records do not say themselves.
@@ -92,11 +92,14 @@ fn named(records: &Table, core: Option<&Table>) -> Vec<Named> {
     columns
 }
 
+/// What is kept of a row of the core.
+type Fields = Box<[Box<str>]>;
+
 /// Rows of the core, by their identifier; only what is needed of them.
 struct Parents {
     /// Where each field of the core stands among those kept.
     places: Vec<Option<usize>>,
-    rows: HashMap<Box<str>, Box<[Box<str>]>>,
+    rows: HashMap<Box<str>, Fields>,
     /// Records whose row is not there.
     lost: AtomicU64,
 }
@@ -115,7 +118,7 @@ impl Parents {
         let (mut twice, mut unreadable, mut first) = (0_u64, 0_u64, None);
         for location in &core.locations {
             let name = container.place(location);
-            let text = text(container, location, &name, core);
+            let text = text((container, location), &name, core, None);
             let head = Head::open(&text)?;
             let work = Core { core, wanted: &wanted };
             let mut take = |parts: Vec<(CorePart, u64)>| -> Outcome<()> {
@@ -163,13 +166,10 @@ struct Core<'a> {
     wanted: &'a [usize],
 }
 
-/// The identifier of a row and the fields that are kept of it.
-type CoreRow = (Box<str>, Box<[Box<str>]>);
-
 /// Rows of a block of the core.
 #[derive(Default)]
 struct CorePart {
-    rows: Vec<CoreRow>,
+    rows: Vec<(Box<str>, Fields)>,
     unreadable: u64,
 }
 
@@ -200,9 +200,9 @@ impl Work for Core<'_> {
     }
 }
 
-/// Screens the records.
-struct Screening<'a> {
-    screener: &'a Screener<'a>,
+/// Hands the records to a desk.
+struct Handing<'a, D> {
+    desk: &'a D,
     layout: &'a Layout,
     parents: Option<&'a (Parents, usize)>,
     at: (usize, usize),
@@ -228,33 +228,33 @@ impl Texts for Joined<'_> {
     }
 }
 
-impl Work for Screening<'_> {
-    type Part = Batch;
+impl<D: Desk> Work for Handing<'_, D> {
+    type Part = D::Part;
 
-    fn begin(&self) -> Batch {
-        self.screener.batch(self.at.0, self.at.1)
+    fn begin(&self) -> D::Part {
+        self.desk.begin(self.at.0, self.at.1)
     }
 
-    fn row(&self, batch: &mut Batch, line: u64, rows: &Rows) {
+    fn row(&self, part: &mut D::Part, line: u64, rows: &Rows) {
         let parent = self.parents.and_then(|(parents, id)| {
             let found = parents.rows.get(rows.field(*id).trim());
             parents.lost.fetch_add(u64::from(found.is_none()), Ordering::Relaxed);
             found.map(|row| (parents, row.as_ref()))
         });
         self.layout.fields(&Joined { rows, parent }, None, |fields| {
-            self.screener.push(batch, &Row { line, content: Content::Fields(fields) });
+            self.desk.push(part, &Row { line, content: Content::Fields(fields) });
         });
     }
 
-    fn swallowed(&self, batch: &mut Batch, line: u64, lines: u64) {
-        self.screener.swallowed(batch, line, lines);
+    fn swallowed(&self, part: &mut D::Part, line: u64, lines: u64) {
+        self.desk.swallowed(part, line, lines);
     }
 
-    fn unreadable(&self, batch: &mut Batch, line: u64, why: &str, lines: u64) {
-        self.screener.push(batch, &Row { line, content: Content::Unreadable(why, lines) });
+    fn unreadable(&self, part: &mut D::Part, line: u64, why: &str, lines: u64) {
+        self.desk.push(part, &Row { line, content: Content::Unreadable(why, lines) });
     }
 
-    fn end(&self, batch: &mut Batch) -> Outcome<()> {
-        self.screener.settle(batch)
+    fn end(&self, part: &mut D::Part) -> Outcome<()> {
+        self.desk.settle(part)
     }
 }

@@ -91,7 +91,10 @@ pub(super) fn window(to: &str, region: &Region) -> Outcome<Option<[f64; 4]>> {
     } else {
         transform(&source, &target).and_then(|way| way.transform_bounds(&[w, s, e, n], 21).ok())
     };
-    Ok(bounds.filter(|b| b.iter().all(|v| v.is_finite())).map(|[w, s, e, n]| {
+    let plain = |b: &[f64; 4]| {
+        b.iter().all(|v| v.is_finite()) && (!target.is_geographic() || -180.0 <= b[0] && b[2] <= 180.0)
+    };
+    Ok(bounds.filter(plain).map(|[w, s, e, n]| {
         let (dx, dy) = (0.01 * (e - w).abs() + 1e-3, 0.01 * (n - s) + 1e-3);
         [w - dx, s - dy, e + dx, n + dy]
     }))

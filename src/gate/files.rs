@@ -10,13 +10,14 @@ use gdal::{Dataset, DatasetOptions, GdalOpenFlags};
 use crate::diag::{Diagnostic, Observer, Outcome, Warnings};
 use crate::grid::{Grid, Region};
 use crate::proxies::{LayerPlan, Measure};
-use crate::records::{Collector, RecordsPlan, Screener};
+use crate::records::{Collector, Desk, RecordsPlan, Screener, Tray};
 
 use super::digest::{InputFile, digest};
+use super::record_files::{Kind, Reading};
 use super::remote::remote_source;
 use super::scale::Wander;
 use super::sources::{GridRequest, LayerData, Peek, Sources};
-use super::{crs, features, grid_in, record_files, scale, table, values};
+use super::{crs, features, grid_in, record_files, scale, values};
 
 /// Drivers that reach for a network.
 const NETWORK_DRIVERS: &str = "HTTP WMS WMTS WCS OGCAPI EEDA EEDAI PLMOSAIC DAAS STACIT STACTA NGW PLSCENES \
@@ -114,6 +115,29 @@ impl Files {
         })
     }
 
+    /// Hands the rows of every file of records to a desk; all problems of all files together.
+    ///
+    /// # Errors
+    /// When a file cannot be read or lacks a column, or the desk or the tray fails.
+    pub fn read_records<D: Desk>(
+        &self,
+        plan: &RecordsPlan,
+        desk: &D,
+        tray: &mut dyn Tray<D::Part>,
+        observer: &dyn Observer,
+    ) -> Outcome<()> {
+        let mut problems = Vec::new();
+        for (number, source) in plan.sources.iter().enumerate() {
+            for file in &source.files {
+                let mut to = Reading { plan, number, desk, tray: &mut *tray, observer };
+                if let Err(p) = record_files::read(self, file, &mut to) {
+                    problems.extend(p.0);
+                }
+            }
+        }
+        if problems.is_empty() { Ok(()) } else { Err(crate::diag::Problems(problems)) }
+    }
+
     /// Every input opened so far, with its fingerprint; a shapefile's companions count as inputs.
     pub fn inputs(&self) -> Vec<InputFile> {
         let mut names: Vec<String> = Vec::new();
@@ -198,16 +222,7 @@ impl Sources for Files {
         (screener, collector): (&Screener, &mut Collector),
         observer: &dyn Observer,
     ) -> Outcome<()> {
-        let mut problems = Vec::new();
-        for (number, source) in plan.sources.iter().enumerate() {
-            for file in &source.files {
-                let to = (screener, &mut *collector);
-                if let Err(p) = record_files::read(self, (file, number), plan, to, observer) {
-                    problems.extend(p.0);
-                }
-            }
-        }
-        if problems.is_empty() { Ok(()) } else { Err(crate::diag::Problems(problems)) }
+        self.read_records(plan, screener, collector, observer)
     }
 
     fn project(&self, from: &str, grid: &Grid, x: &mut [f64], y: &mut [f64]) -> Outcome<()> {
@@ -262,18 +277,15 @@ impl Sources for Files {
 
     fn peek(&self, file: &str, wanted: Option<&str>) -> Outcome<Peek> {
         let path = self.path(file)?;
-        if table::is_text(&path) {
-            return Ok(Peek {
-                file: file.into(),
-                kind: "text",
-                crs: String::new(),
-                extent: None,
-                count: None,
-            });
-        }
-        let packed = record_files::peek(&path, file, wanted);
-        if let Ok(Some(packed)) = packed {
-            return Ok(packed);
+        let word = match record_files::kind(&path, file, wanted)? {
+            Kind::Text => "text",
+            Kind::Archive(..) => "archive",
+            Kind::Zipped(..) => "zipped text",
+            Kind::Parquet(_) => "Parquet",
+            Kind::Vector => "",
+        };
+        if !word.is_empty() {
+            return Ok(Peek { file: file.into(), kind: word, crs: String::new(), extent: None, count: None });
         }
         if let Ok(raster) = self.raster(file)
             && raster.raster_count() > 0
@@ -287,7 +299,7 @@ impl Sources for Files {
                 count: Some(grid.len() as u64),
             });
         }
-        let dataset = self.vector(file).or_else(|other| packed.and(Err(other)))?;
+        let dataset = self.vector(file)?;
         let layer = features::open_layer(&dataset, file, wanted)?;
         let crs = layer.spatial_ref().and_then(|s| crs::describe(&s)).map(|c| c.label).unwrap_or_default();
         let extent = layer.get_extent().ok().map(|e| [e.MinX, e.MinY, e.MaxX, e.MaxY]);

@@ -13,13 +13,14 @@ use parquet::file::reader::{FileReader, SerializedFileReader};
 use parquet::record::Field;
 use parquet::schema::types::Type;
 
-use crate::diag::{Diagnostic, Observer, Outcome};
-use crate::records::{Collector, Content, RecordsPlan, Row, Screener};
+use crate::diag::{Diagnostic, Outcome};
+use crate::records::{Content, Desk, Row};
 
 use super::layout::{Layout, Named, Texts};
+use super::record_files::Reading;
 
 /// Rows screened together.
-const BATCH: usize = 16_384;
+const BATCH: u64 = 16_384;
 
 /// Whether a file is Parquet, by its first bytes.
 pub(super) fn is_parquet(path: &Path) -> bool {
@@ -56,11 +57,6 @@ impl<'a> Table<'a> {
         Ok(Self { reader, name, names })
     }
 
-    /// Number of rows.
-    pub(super) fn rows(&self) -> u64 {
-        u64::try_from(self.reader.metadata().file_metadata().num_rows()).unwrap_or(0)
-    }
-
     /// Hands the texts of some columns of every row to `each`, with the row's number from 1.
     pub(super) fn each(
         &self,
@@ -86,33 +82,28 @@ impl<'a> Table<'a> {
     }
 }
 
-/// Hands the rows of a file to the collector.
-pub(super) fn read(
-    table: &Table,
-    (plan, source): (&RecordsPlan, usize),
-    (screener, collector): (&Screener, &mut Collector),
-    observer: &dyn Observer,
-) -> Outcome<()> {
+/// Hands the rows of a file on.
+pub(super) fn read<D: Desk>(table: &Table, to: &mut Reading<D>) -> Outcome<()> {
     let named = Named::in_order(&table.names);
-    let layout = Layout::find(&named, (plan, &plan.sources[source]), table.name, false)?;
-    let file = collector.open(table.name);
-    collector.found(file, &layout.matches);
+    let layout = Layout::find(&named, (to.plan, to.source()), table.name, false)?;
+    let file = to.tray.open(table.name);
+    to.tray.found(file, &layout.matches);
     let wanted = layout.columns();
     let mut places = vec![0; table.names.len()];
     wanted.iter().enumerate().for_each(|(n, column)| places[*column] = n);
-    let mut batch = screener.batch(file, source);
+    let mut part = to.desk.begin(file, to.number);
     table.each(&wanted, &mut |line, texts| {
         layout.fields(&RowOf { texts, places: &places }, None, |fields| {
-            screener.push(&mut batch, &Row { line, content: Content::Fields(fields) });
+            to.desk.push(&mut part, &Row { line, content: Content::Fields(fields) });
         });
-        if line % BATCH as u64 == 0 {
-            observer.advance(BATCH as u64);
-            let full = std::mem::replace(&mut batch, screener.batch(file, source));
-            collector.take(screener, full)?;
+        if line % BATCH == 0 {
+            to.observer.advance(BATCH);
+            let full = std::mem::replace(&mut part, to.desk.begin(file, to.number));
+            to.hand(full)?;
         }
         Ok(())
     })?;
-    collector.take(screener, batch)
+    to.hand(part)
 }
 
 /// One row's texts, and where each column of the file stands among them.

@@ -1,77 +1,106 @@
 //! Records in vector files: geometry where there is one, columns otherwise.
 
+use gdal::Dataset;
 use gdal::vector::{Feature, FieldValue, LayerAccess};
 
-use crate::diag::{Diagnostic, Observer, Outcome};
-use crate::grid::CrsKind;
-use crate::records::{Collector, Content, Place, RecordsPlan, Row, Screener};
+use crate::diag::{Diagnostic, Outcome};
+use crate::grid::{Crs, CrsKind};
+use crate::records::{Content, Desk, Place, Row, SourcePlan};
 
 use super::crs;
 use super::features::{forget_errors, geometry_of, last_error, no_crs, open_layer};
 use super::files::Files;
 use super::layout::{Layout, Named, Point, Texts};
+use super::record_files::Reading;
 
 /// Features screened together.
 const BATCH: usize = 16_384;
 
-/// The fields of a feature.
-struct Attributes(Vec<String>);
+/// Takes a feature: its number, its attributes as text, and its place.
+type Each<'a> = dyn FnMut(u64, &[String], Option<Place>) -> Outcome<()> + 'a;
 
-impl Texts for Attributes {
+/// A layer of records, opened.
+pub(super) struct Points<'a> {
+    file: &'a str,
+    dataset: Dataset,
+    table: Option<String>,
+    /// Names of its attributes.
+    pub(super) names: Vec<String>,
+    /// CRS of its geometries; `None` where the place is in columns.
+    pub(super) own: Option<Crs>,
+}
+
+impl<'a> Points<'a> {
+    /// Opens a layer.
+    pub(super) fn open(files: &Files, file: &'a str, source: &SourcePlan) -> Outcome<Self> {
+        let dataset = files.vector(file)?;
+        let layer = open_layer(&dataset, file, source.table.as_deref())?;
+        let names: Vec<String> = layer.defn().fields().map(|f| f.name()).collect();
+        let geometries = layer.defn().geom_fields().next().is_some()
+            && !source.columns.stated.iter().any(|s| s == "longitude" || s == "latitude");
+        let own = if geometries {
+            let srs = layer.spatial_ref().ok_or_else(|| no_crs(file))?;
+            Some(crs::describe(&srs).ok_or_else(|| no_crs(file))?)
+        } else {
+            None
+        };
+        Ok(Self { file, dataset, table: source.table.clone(), names, own })
+    }
+
+    /// How many features it says it holds.
+    pub(super) fn count(&self) -> Option<u64> {
+        open_layer(&self.dataset, self.file, self.table.as_deref()).ok()?.try_feature_count()
+    }
+
+    /// Hands every feature to `each`: its number, its attributes as text, and its place.
+    pub(super) fn each(&self, each: &mut Each) -> Outcome<()> {
+        let mut layer = open_layer(&self.dataset, self.file, self.table.as_deref())?;
+        forget_errors();
+        for feature in layer.features() {
+            unharmed(self.file)?;
+            let texts: Vec<String> = (0..self.names.len()).map(|i| text(&feature, i)).collect();
+            let place = if self.own.is_some() { Some(place(&feature, self.file)?) } else { None };
+            each(feature.fid().unwrap_or(0), &texts, place)?;
+            forget_errors(); // a place that cannot be turned is none of the file's
+        }
+        unharmed(self.file)
+    }
+}
+
+/// The attributes of a feature.
+struct Attributes<'a>(&'a [String]);
+
+impl Texts for Attributes<'_> {
     fn own(&self, column: usize) -> &str {
         &self.0[column]
     }
 }
 
-/// Hands the features of a vector file to the collector.
-pub(super) fn read(
-    files: &Files,
-    (file, number): (&str, usize),
-    plan: &RecordsPlan,
-    (screener, collector): (&Screener, &mut Collector),
-    observer: &dyn Observer,
-) -> Outcome<()> {
-    let source = &plan.sources[number];
-    let index = collector.open(file);
-    let dataset = files.vector(file)?;
-    let mut layer = open_layer(&dataset, file, source.table.as_deref())?;
-    let names: Vec<String> = layer.defn().fields().map(|f| f.name()).collect();
-    let geometries = layer.defn().geom_fields().next().is_some()
-        && !source.columns.stated.iter().any(|s| s == "longitude" || s == "latitude");
-    let layout = Layout::find(&Named::in_order(&names), (plan, source), file, geometries)?;
-    collector.found(index, &layout.matches);
-    let own = if geometries {
-        let srs = layer.spatial_ref().ok_or_else(|| no_crs(file))?;
-        Some(crs::describe(&srs).ok_or_else(|| no_crs(file))?)
-    } else {
-        None
-    };
-    observer.begin(&format!("read {file}"), layer.try_feature_count());
-    let mut batch = screener.batch(index, number);
-    forget_errors();
-    for feature in layer.features() {
-        let texts = Attributes((0..names.len()).map(|i| text(&feature, i)).collect());
-        let line = feature.fid().unwrap_or(0);
-        let point = match &own {
-            Some(own) => {
-                let degrees = own.kind == CrsKind::Geographic;
-                Some(Point { place: place(&feature, file)?, wkt: &own.wkt, degrees })
-            }
-            None => None,
-        };
-        layout.fields(&texts, point, |fields| {
-            screener.push(&mut batch, &Row { line, content: Content::Fields(fields) });
+/// Hands the features of a vector file on.
+pub(super) fn read<D: Desk>(points: &Points, to: &mut Reading<D>) -> Outcome<()> {
+    let named = Named::in_order(&points.names);
+    let layout = Layout::find(&named, (to.plan, to.source()), points.file, points.own.is_some())?;
+    let file = to.tray.open(points.file);
+    to.tray.found(file, &layout.matches);
+    let mut part = to.desk.begin(file, to.number);
+    let mut rows = 0;
+    points.each(&mut |line, texts, place| {
+        let point = points.own.as_ref().zip(place).map(|(own, place)| {
+            let degrees = own.kind == CrsKind::Geographic;
+            Point { place, wkt: &own.wkt, degrees }
         });
-        if batch.waiting() >= BATCH {
-            unharmed(file)?;
-            collector.take(screener, std::mem::replace(&mut batch, screener.batch(index, number)))?;
-            forget_errors(); // a place that cannot be turned is none of the file's
+        layout.fields(&Attributes(texts), point, |fields| {
+            to.desk.push(&mut part, &Row { line, content: Content::Fields(fields) });
+        });
+        to.observer.advance(1);
+        rows += 1;
+        if rows % BATCH == 0 {
+            let full = std::mem::replace(&mut part, to.desk.begin(file, to.number));
+            to.hand(full)?;
         }
-        observer.advance(1);
-    }
-    observer.end();
-    unharmed(file)?;
-    collector.take(screener, batch)
+        Ok(())
+    })?;
+    to.hand(part)
 }
 
 /// Whether features came without an error so far: the driver ends at one as it does at the file's end.

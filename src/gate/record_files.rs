@@ -4,17 +4,17 @@ use std::fs::File;
 use std::path::{Path, PathBuf};
 
 use crate::diag::{Diagnostic, Observer, Outcome};
-use crate::records::{Collector, RecordsPlan, Screener};
+use crate::records::{Desk, RecordsPlan, SourcePlan, Tray};
 
 use super::archive::{self, Archive};
 use super::container::{Container, Member, is_archive_folder};
 use super::files::Files;
 use super::parquet_in::{self, is_parquet};
-use super::sources::Peek;
+use super::points::{self, Points};
 use super::text::{Form, TextSource};
 use super::unpack::{Stream, broken, maybe_gzip};
 use super::zipped::is_zip;
-use super::{points, table};
+use super::{archived, table};
 
 /// What a file of records is.
 pub(super) enum Kind {
@@ -57,23 +57,6 @@ pub(super) fn kind(path: &Path, file: &str, table: Option<&str>) -> Outcome<Kind
         return Ok(Kind::Parquet(vec![path.to_owned()]));
     }
     Ok(if table::is_text(path) { Kind::Text } else { Kind::Vector })
-}
-
-/// What a look at packed records shows; `None` for what is not packed.
-///
-/// # Errors
-/// When a zip file or a folder cannot be used for records.
-pub(super) fn peek(path: &Path, file: &str, table: Option<&str>) -> Outcome<Option<Peek>> {
-    let look = |kind, count| Peek { file: file.into(), kind, crs: String::new(), extent: None, count };
-    Ok(match kind(path, file, table)? {
-        Kind::Text | Kind::Vector => None,
-        Kind::Zipped(..) => Some(look("text", None)),
-        Kind::Archive(..) => Some(look("archive", None)),
-        Kind::Parquet(parts) => {
-            let rows = |path: &PathBuf| Ok(parquet_in::Table::open(path, file)?.rows());
-            Some(look("parquet", Some(parts.iter().map(rows).sum::<Outcome<u64>>()?)))
-        }
-    })
 }
 
 /// The table in a zip file that is no archive: the one named, or the only one.
@@ -119,48 +102,90 @@ fn no_records(file: &str) -> Diagnostic {
         .cure("give a file of records, a Darwin Core archive, or a folder of Parquet parts")
 }
 
-/// Hands the records of a file to the collector.
-pub(super) fn read(
-    files: &Files,
-    (file, source): (&str, usize),
-    plan: &RecordsPlan,
-    to: (&Screener, &mut Collector),
-    observer: &dyn Observer,
-) -> Outcome<()> {
+/// Records on their way to a desk.
+pub(super) struct Reading<'a, D: Desk> {
+    pub(super) plan: &'a RecordsPlan,
+    /// Number of the source in the plan.
+    pub(super) number: usize,
+    pub(super) desk: &'a D,
+    pub(super) tray: &'a mut dyn Tray<D::Part>,
+    pub(super) observer: &'a dyn Observer,
+}
+
+impl<D: Desk> Reading<'_, D> {
+    pub(super) fn source(&self) -> &SourcePlan {
+        &self.plan.sources[self.number]
+    }
+
+    /// Hands on a part whose lines need no counting.
+    pub(super) fn hand(&mut self, mut part: D::Part) -> Outcome<()> {
+        self.desk.settle(&mut part)?;
+        self.tray.take(vec![(part, 0)])
+    }
+}
+
+/// Reads the records of a file.
+pub(super) fn read<D: Desk>(files: &Files, file: &str, to: &mut Reading<D>) -> Outcome<()> {
     let path = files.path(file)?;
-    let asked = &plan.sources[source];
+    let quotes = to.source().quotes;
     let what = format!("read {file}");
-    match kind(&path, file, asked.table.as_deref())? {
-        Kind::Vector => return points::read(files, (file, source), plan, to, observer),
+    let kind = kind(&path, file, to.source().table.as_deref())?;
+    fits(&kind, file, to.source())?;
+    match kind {
+        Kind::Vector => {
+            let points = Points::open(files, file, to.source())?;
+            to.observer.begin(&what, points.count());
+            points::read(&points, to)?;
+        }
         Kind::Text => {
             let open = || plain(&path, file);
-            let text = TextSource { name: file, open: Box::new(open), form: Form::Found(asked.quotes) };
-            observer.begin(&what, unpacked_size(&path));
-            table::read(&text, source, plan, to, observer)?;
+            to.observer.begin(&what, unpacked_size(&path));
+            table::read(&TextSource { name: file, open: Box::new(open), form: Form::Found(quotes) }, to)?;
         }
         Kind::Zipped(container, member) => {
             let name = container.place(&member.name);
             let open = || container.stream(&member.name);
-            let text = TextSource { name: &name, open: Box::new(open), form: Form::Found(asked.quotes) };
-            observer.begin(&what, Some(member.size));
-            table::read(&text, source, plan, to, observer)?;
+            to.observer.begin(&what, Some(member.size));
+            table::read(&TextSource { name: &name, open: Box::new(open), form: Form::Found(quotes) }, to)?;
         }
         Kind::Archive(container, archive) => {
-            observer.begin(&what, archive_size(&container, &archive));
-            super::archived::read(&container, &archive, (plan, source), to, observer)?;
+            to.observer.begin(&what, archive_size(&container, &archive));
+            archived::read(&container, &archive, to)?;
         }
         Kind::Parquet(parts) => {
-            observer.begin(&what, None);
-            let (screener, collector) = to;
+            to.observer.begin(&what, None);
             for path in &parts {
                 let name = part_name(file, path, parts.len());
-                let table = parquet_in::Table::open(path, &name)?;
-                parquet_in::read(&table, (plan, source), (screener, &mut *collector), observer)?;
+                parquet_in::read(&parquet_in::Table::open(path, &name)?, to)?;
             }
         }
     }
-    observer.end();
+    to.observer.end();
     Ok(())
+}
+
+/// Refuses keys of the plan that say nothing of this kind of file.
+fn fits(kind: &Kind, file: &str, source: &SourcePlan) -> Outcome<()> {
+    let (what, table, quotes) = match kind {
+        Kind::Text => ("is delimited text", false, true),
+        Kind::Archive(..) => {
+            ("is a Darwin Core archive, which says itself where its records are", false, true)
+        }
+        Kind::Zipped(..) => ("is a zip file", true, true),
+        Kind::Parquet(_) => ("is Parquet", false, false),
+        Kind::Vector => ("is a vector file", true, false),
+    };
+    let unfit = [("table", source.table.is_some() && !table), ("quotes", source.quotes.is_some() && !quotes)];
+    match unfit.iter().find(|(_, unfit)| *unfit) {
+        None => Ok(()),
+        Some((key, _)) => Err(Diagnostic::plan(
+            "misplaced_key",
+            format!("[records] {key}"),
+            format!("`{file}` {what}: `{key}` says nothing of it"),
+        )
+        .cure(format!("remove `{key}`, or give that file a `[[records.source]]` of its own"))
+        .into()),
+    }
 }
 
 /// What messages call a part of a folder.

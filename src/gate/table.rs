@@ -4,10 +4,11 @@ use std::fs::File;
 use std::io::Read;
 use std::path::Path;
 
-use crate::diag::{Observer, Outcome};
-use crate::records::{Batch, Collector, Content, RecordsPlan, Row, Screener};
+use crate::diag::Outcome;
+use crate::records::{Content, Desk, Row};
 
 use super::layout::{Layout, Named, Texts};
+use super::record_files::Reading;
 use super::text::{Head, Rows, TextSource, Work, scan};
 
 /// Whether a file is gzipped.
@@ -38,55 +39,49 @@ impl Texts for Rows<'_> {
     }
 }
 
-/// Screens the rows of a text.
-struct Screening<'a> {
-    screener: &'a Screener<'a>,
+/// Hands the rows of a text to a desk.
+struct Handing<'a, D> {
+    desk: &'a D,
     layout: &'a Layout,
     /// Number of the file among those read, and of its source in the plan.
     at: (usize, usize),
 }
 
-impl Work for Screening<'_> {
-    type Part = Batch;
+impl<D: Desk> Work for Handing<'_, D> {
+    type Part = D::Part;
 
-    fn begin(&self) -> Batch {
-        self.screener.batch(self.at.0, self.at.1)
+    fn begin(&self) -> D::Part {
+        self.desk.begin(self.at.0, self.at.1)
     }
 
-    fn row(&self, batch: &mut Batch, line: u64, rows: &Rows) {
+    fn row(&self, part: &mut D::Part, line: u64, rows: &Rows) {
         self.layout.fields(rows, None, |fields| {
-            self.screener.push(batch, &Row { line, content: Content::Fields(fields) });
+            self.desk.push(part, &Row { line, content: Content::Fields(fields) });
         });
     }
 
-    fn swallowed(&self, batch: &mut Batch, line: u64, lines: u64) {
-        self.screener.swallowed(batch, line, lines);
+    fn swallowed(&self, part: &mut D::Part, line: u64, lines: u64) {
+        self.desk.swallowed(part, line, lines);
     }
 
-    fn unreadable(&self, batch: &mut Batch, line: u64, why: &str, lines: u64) {
-        self.screener.push(batch, &Row { line, content: Content::Unreadable(why, lines) });
+    fn unreadable(&self, part: &mut D::Part, line: u64, why: &str, lines: u64) {
+        self.desk.push(part, &Row { line, content: Content::Unreadable(why, lines) });
     }
 
-    fn end(&self, batch: &mut Batch) -> Outcome<()> {
-        self.screener.settle(batch)
+    fn end(&self, part: &mut D::Part) -> Outcome<()> {
+        self.desk.settle(part)
     }
 }
 
-/// Hands the records of a text file to the collector.
-pub(super) fn read(
-    text: &TextSource,
-    source: usize,
-    plan: &RecordsPlan,
-    (screener, collector): (&Screener, &mut Collector),
-    observer: &dyn Observer,
-) -> Outcome<()> {
+/// Hands the records of a text on.
+pub(super) fn read<D: Desk>(text: &TextSource, to: &mut Reading<D>) -> Outcome<()> {
     let head = Head::open(text)?;
-    let named = Named::in_order(&head.names);
-    let layout = Layout::find(&named, (plan, &plan.sources[source]), text.name, false)?;
-    let file = collector.open(text.name);
-    collector.found(file, &layout.matches);
-    let work = Screening { screener, layout: &layout, at: (file, source) };
-    let remark = scan(text, head, &work, &mut |parts| collector.absorb(parts), observer)?;
-    collector.remarks(remark);
+    let layout = Layout::find(&Named::in_order(&head.names), (to.plan, to.source()), text.name, false)?;
+    let file = to.tray.open(text.name);
+    to.tray.found(file, &layout.matches);
+    let work = Handing { desk: to.desk, layout: &layout, at: (file, to.number) };
+    let tray = &mut *to.tray;
+    let remark = scan(text, head, &work, &mut |parts| tray.take(parts), to.observer)?;
+    remark.into_iter().for_each(|r| to.tray.remark(r));
     Ok(())
 }

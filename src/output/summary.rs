@@ -5,7 +5,7 @@ use serde_json::{Map, Value, json};
 use crate::check::{Estimate, Standing};
 use crate::diag::Diagnostic;
 use crate::grid::Grid;
-use crate::records::{Precision, Rule};
+use crate::records::{Capped, Match, Pile, Precision, Records, Rule};
 
 use super::finding::{CandidateFinding, Finding};
 use super::surface::Finished;
@@ -22,18 +22,13 @@ fn grid(g: &Grid, cells_inside: Option<usize>, area_m2: Option<f64>) -> Value {
     })
 }
 
-fn records(f: &Finding) -> Value {
-    let r = &f.records;
+fn records(r: &Records) -> Value {
     let top = r.top_share();
     let dropped: Map<String, Value> =
         Rule::ALL.iter().map(|rule| (rule.word().to_owned(), json!(r.ledger.dropped(*rule)))).collect();
-    let names = [Precision::Day, Precision::Range, Precision::Month, Precision::Year]
-        .map(|p| format!("{p:?}").to_lowercase());
-    let mut dates: Map<String, Value> = names.into_iter().zip(r.dates).map(|(n, c)| (n, json!(c))).collect();
-    dates.insert("none".into(), json!(r.dates[4]));
     json!({
         "read": r.ledger.read(), "kept": r.ledger.kept(), "snapped": r.ledger.snapped(), "dropped": dropped,
-        "dates": dates, "count": r.count.word(), "units": r.weight(), "places": r.places,
+        "dates": dates(r), "count": r.count.word(), "units": r.weight(), "places": r.places,
         "visits": {
             "count": r.visits.count,
             "records_per_visit": {
@@ -41,8 +36,37 @@ fn records(f: &Finding) -> Value {
             },
             "empty_share": Value::Null,
         },
+        "observers": r.reach.observers, "datasets": r.reach.datasets, "extent": r.reach.extent,
         "effective_observers": r.effective_observers, "effective_datasets": r.effective_datasets,
         "top_share": {"observer": top[0], "dataset": top[1], "cell": top[2]},
+        "on_lattice": r.lattices.iter().map(|(step, share)| json!({"step": step, "share": share})).collect::<Vec<_>>(),
+        "piles": r.piles.iter().map(|p| pile(r, p)).collect::<Vec<_>>(),
+        "cap": r.capped.iter().map(cap).collect::<Vec<_>>(),
+    })
+}
+
+/// How finely the rows are dated, and the first and last day of those kept.
+fn dates(r: &Records) -> Value {
+    let names = [Precision::Day, Precision::Range, Precision::Month, Precision::Year]
+        .map(|p| format!("{p:?}").to_lowercase());
+    let mut dates: Map<String, Value> = names.into_iter().zip(r.dates).map(|(n, c)| (n, json!(c))).collect();
+    dates.insert("none".into(), json!(r.dates[4]));
+    dates.insert("first".into(), json!(r.reach.days.map(|d| d.0.to_string())));
+    dates.insert("last".into(), json!(r.reach.days.map(|d| d.1.to_string())));
+    Value::Object(dates)
+}
+
+/// How many records share one place; not which place, as this file is handed on.
+fn pile(r: &Records, p: &Pile) -> Value {
+    json!({"records": p.records, "share": p.records as f64 / r.ledger.kept() as f64})
+}
+
+fn cap(c: &Capped) -> Value {
+    let weights: Vec<Value> =
+        c.heaviest.iter().map(|(units, each)| json!({"units": units, "weight_each": each})).collect();
+    json!({
+        "of": c.what, "cap": c.cap, "groups": c.groups.0, "capped": c.groups.1, "unknown_share": c.unknown,
+        "heaviest": weights,
     })
 }
 
@@ -98,7 +122,7 @@ fn common(f: &Finding) -> Map<String, Value> {
         ("title", json!(f.title)),
         ("seed", json!(f.seed.0)),
         ("grid", grid(f.region.grid(), Some(f.region.len()), Some(f.region.area()))),
-        ("records", records(f)),
+        ("records", records(&f.records)),
         ("layers", layers(f)),
         (
             "holdout",
@@ -213,6 +237,10 @@ pub struct Checked {
     pub grid: Option<(Grid, Option<usize>)>,
     /// The inputs.
     pub inputs: Vec<CheckedInput>,
+    /// The records, where they could be read.
+    pub records: Option<Records>,
+    /// How the columns of each file of records were found.
+    pub columns: Vec<(String, Vec<Match>)>,
     /// Memory a build would need.
     pub memory_bytes: Option<u64>,
     /// Seconds a build would take, roughly.
@@ -221,6 +249,14 @@ pub struct Checked {
     pub problems: Vec<Diagnostic>,
     /// Warnings.
     pub warnings: Vec<Diagnostic>,
+}
+
+fn columns(files: &[(String, Vec<Match>)]) -> Value {
+    let one = |m: &Match| json!({"role": m.role, "wanted": m.wanted, "column": m.column, "how": m.how()});
+    files
+        .iter()
+        .map(|(file, found)| json!({"file": file, "found": found.iter().map(one).collect::<Vec<_>>()}))
+        .collect()
 }
 
 /// `check --json`.
@@ -233,6 +269,7 @@ pub fn check_json(c: &Checked) -> Value {
     let said = |list: &[Diagnostic]| -> Value { list.iter().map(warning).collect() };
     json!({
         "grid": c.grid.as_ref().map(|(g, inside)| grid(g, *inside, None)), "inputs": inputs,
+        "records": c.records.as_ref().map(records), "columns": columns(&c.columns),
         "memory_bytes": c.memory_bytes, "seconds": c.seconds,
         "problems": said(&c.problems), "warnings": said(&c.warnings),
     })

@@ -11,7 +11,7 @@ use crate::grid::{CrsKind, Region};
 use super::ledger::{Ledger, Rule};
 use super::names::Names;
 use super::row::{Content, Fields, Row};
-use super::screen::{Passed, Radius, date_of, precision, screen};
+use super::screen::{Passed, Radius, date_of, precision};
 use super::settings::RecordsPlan;
 use super::signs::{Seen, Signs, Turn};
 use super::snap::Snapper;
@@ -104,11 +104,6 @@ pub struct Batch {
 }
 
 impl Batch {
-    /// Rows waiting for their cells.
-    pub fn waiting(&self) -> usize {
-        self.waiting.len()
-    }
-
     fn drop(&mut self, line: u64, rule: Rule, detail: Detail) {
         self.ledger.drop(rule);
         self.dropped.push(Dropped { line, rule, detail });
@@ -144,7 +139,7 @@ impl<'a> Screener<'a> {
     }
 
     /// An empty batch for rows of a file, by its number among those read and that of its source.
-    pub fn batch(&self, file: usize, source: usize) -> Batch {
+    pub(super) fn batch(&self, file: usize, source: usize) -> Batch {
         Batch {
             file: file as u32,
             source,
@@ -162,7 +157,7 @@ impl<'a> Screener<'a> {
     }
 
     /// Takes one row.
-    pub fn push(&self, batch: &mut Batch, row: &Row) {
+    pub(super) fn screen(&self, batch: &mut Batch, row: &Row) {
         match &row.content {
             Content::Unreadable(why, lines) => {
                 batch.dates[4] += 1;
@@ -174,7 +169,7 @@ impl<'a> Screener<'a> {
     }
 
     /// Notes so many lines inside the quotes of a row that look like rows themselves.
-    pub fn swallowed(&self, batch: &mut Batch, line: u64, lines: u64) {
+    pub(super) fn hold(&self, batch: &mut Batch, line: u64, lines: u64) {
         batch.signs.swallowed.add(batch.file, line, (0.0, 0.0), lines);
     }
 
@@ -182,7 +177,7 @@ impl<'a> Screener<'a> {
         let date = date_of(fields);
         batch.dates[precision(date)] += 1;
         let degrees = fields.degrees.unwrap_or_else(|| self.projection.degrees(batch.source));
-        match screen(fields, self.plan, degrees, date) {
+        match super::screen::screen(fields, self.plan, degrees, date) {
             Err((rule, detail)) => {
                 if rule == Rule::ImpossibleCoordinate {
                     self.note_impossible(batch, line, &detail);
@@ -231,7 +226,7 @@ impl<'a> Screener<'a> {
     ///
     /// # Errors
     /// When coordinates cannot be turned.
-    pub fn settle(&self, batch: &mut Batch) -> Outcome<()> {
+    pub(super) fn place_all(&self, batch: &mut Batch) -> Outcome<()> {
         let waiting = std::mem::take(&mut batch.waiting);
         let datums = std::mem::take(&mut batch.datums);
         let mut by_datum: Vec<Vec<&Waiting>> = vec![Vec::new(); datums.len() + 1];

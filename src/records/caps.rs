@@ -2,8 +2,6 @@
 //!
 //! Visits without an observer (or data set) are nobody's and are never capped.
 
-use std::collections::BTreeMap;
-
 use crate::diag::{Diagnostic, Outcome};
 
 use super::settings::{CapPlan, Count};
@@ -23,7 +21,9 @@ const TOLD: usize = 10;
 pub struct Groups {
     cap: CapPlan,
     base: Vec<f64>,
-    observer: Vec<u32>,
+    /// Each unit's observer, one a unit; where it stands.
+    observer: Vec<(u32, f64)>,
+    single: Vec<u32>,
     /// Where a unit's data sets begin in `dataset`.
     starts: Vec<u32>,
     dataset: Vec<(u32, f64)>,
@@ -44,46 +44,63 @@ pub struct Capped {
     pub heaviest: Vec<(f64, f64)>,
 }
 
-/// The groups of a unit with its share in each.
-type Shares<'a> = Box<dyn Fn(&Unit) -> Vec<(u32, f64)> + 'a>;
-
 /// One kind of groups: the cap, and the groups of each unit with their shares in it.
 struct Kind<'a> {
     what: &'static str,
     cap: f64,
-    of: Shares<'a>,
+    starts: &'a [u32],
+    of: &'a [(u32, f64)],
+    /// Groups, the unknown (0) counted.
+    count: usize,
+}
+
+impl Kind<'_> {
+    fn groups(&self, unit: &Unit) -> &[(u32, f64)] {
+        let n = unit.number as usize;
+        &self.of[self.starts[n] as usize..self.starts[n + 1] as usize]
+    }
+
+    /// Weight by group.
+    fn totals(&self, units: &[Unit]) -> Vec<f64> {
+        let mut by = vec![0.0; self.count];
+        for unit in units {
+            self.groups(unit).iter().for_each(|(g, share)| by[*g as usize] += unit.weight * share);
+        }
+        by
+    }
 }
 
 impl Groups {
     /// The groups of all visits; `None` where the plan caps nothing.
     pub(super) fn new(cap: CapPlan, sorted: &Sorted, count: Count) -> Option<Self> {
         cap.observer.or(cap.dataset)?;
-        let mut groups = Self {
-            cap,
-            base: sorted.visits.iter().map(|v| weight(v, count)).collect(),
-            observer: sorted.visits.iter().map(|v| v.key.1).collect(),
-            starts: vec![0],
-            dataset: Vec::new(),
-        };
-        for visit in 0..sorted.visits.len() {
-            groups.dataset.extend(datasets_of(sorted, visit));
-            groups.starts.push(groups.dataset.len() as u32);
+        let visits = &sorted.visits;
+        let (mut starts, mut dataset) = (vec![0], Vec::new());
+        for visit in 0..visits.len() {
+            dataset.extend(datasets_of(sorted, visit));
+            starts.push(dataset.len() as u32);
         }
-        Some(groups)
+        Some(Self {
+            cap,
+            base: visits.iter().map(|v| weight(v, count)).collect(),
+            single: (0..=visits.len() as u32).collect(),
+            observer: visits.iter().map(|v| (v.key.1, 1.0)).collect(),
+            starts,
+            dataset,
+        })
     }
 
     fn kinds(&self) -> Vec<Kind<'_>> {
-        let datasets = |u: &Unit| {
-            let n = u.number as usize;
-            self.dataset[self.starts[n] as usize..self.starts[n + 1] as usize].to_vec()
+        let kind = |what, cap: Option<f64>, starts, of: &'_ [(u32, f64)]| {
+            let count = of.iter().map(|(g, _)| *g as usize + 1).max().unwrap_or(1);
+            cap.map(|cap| (what, cap, starts, count))
         };
-        let observer = self.cap.observer.map(|cap| Kind {
-            what: "observer",
-            cap,
-            of: Box::new(|u: &Unit| vec![(self.observer[u.number as usize], 1.0)]),
-        });
-        let dataset = self.cap.dataset.map(|cap| Kind { what: "dataset", cap, of: Box::new(datasets) });
-        observer.into_iter().chain(dataset).collect()
+        let observer = kind("observer", self.cap.observer, &self.single, &self.observer);
+        let dataset = kind("dataset", self.cap.dataset, &self.starts, &self.dataset);
+        let made = |k: Option<(&'static str, f64, _, usize)>, of| {
+            k.map(|(what, cap, starts, count): (_, _, &Vec<u32>, _)| Kind { what, cap, starts, of, count })
+        };
+        made(observer, &self.observer[..]).into_iter().chain(made(dataset, &self.dataset[..])).collect()
     }
 
     /// Weighs all units of a study.
@@ -92,7 +109,7 @@ impl Groups {
     /// When a cap cannot be met.
     pub(super) fn cap(&self, units: &mut [Unit]) -> Outcome<Vec<Capped>> {
         let kinds = self.kinds();
-        let before: Vec<BTreeMap<u32, f64>> = kinds.iter().map(|k| totals(units, &k.of)).collect();
+        let before: Vec<Vec<f64>> = kinds.iter().map(|k| k.totals(units)).collect();
         for (kind, totals) in kinds.iter().zip(&before) {
             let least = smallest(totals);
             if kind.cap < least * (1.0 - SLACK) {
@@ -110,42 +127,38 @@ impl Groups {
     pub(super) fn weigh(&self, units: &mut [Unit]) {
         units.iter_mut().for_each(|u| u.weight = self.base[u.number as usize]);
         let kinds = self.kinds();
-        let loose: Vec<f64> = kinds.iter().map(|k| smallest(&totals(units, &k.of)).max(k.cap)).collect();
+        let loose: Vec<f64> = kinds.iter().map(|k| smallest(&k.totals(units)).max(k.cap)).collect();
         settle(units, &kinds, Some(&loose));
     }
 }
 
-/// Weight by group.
-fn totals(units: &[Unit], of: &dyn Fn(&Unit) -> Vec<(u32, f64)>) -> BTreeMap<u32, f64> {
-    let mut by = BTreeMap::new();
-    for unit in units {
-        of(unit).iter().for_each(|(g, share)| *by.entry(*g).or_insert(0.0) += unit.weight * share);
-    }
-    by
+/// Groups with a name that weigh something.
+fn known(totals: &[f64]) -> usize {
+    totals.iter().skip(1).filter(|w| **w > 0.0).count()
 }
 
 /// The smallest cap that can be met: any where some weight is nobody's, else equal shares.
-fn smallest(totals: &BTreeMap<u32, f64>) -> f64 {
-    let known = totals.iter().filter(|(g, w)| **g > 0 && **w > 0.0).count();
-    if known == 0 || totals.get(&0).is_some_and(|w| *w > 0.0) { 0.0 } else { 1.0 / known as f64 }
+fn smallest(totals: &[f64]) -> f64 {
+    let known = known(totals);
+    if known == 0 || totals[0] > 0.0 { 0.0 } else { 1.0 / known as f64 }
 }
 
 /// Caps one kind after the other until all hold; `false` when they never do.
 fn settle(units: &mut [Unit], kinds: &[Kind], loose: Option<&[f64]>) -> bool {
-    let cap = |k: usize| loose.map_or(kinds[k].cap, |l| l[k]);
     for _ in 0..ROUNDS {
         let mut held = true;
         for (k, kind) in kinds.iter().enumerate() {
-            let by = totals(units, &kind.of);
-            let total: f64 = by.values().sum();
-            let limit = cap(k);
-            if by.iter().all(|(g, w)| *g == 0 || *w <= limit * total * (1.0 + SLACK)) {
+            let by = kind.totals(units);
+            let limit = loose.map_or(kind.cap, |l| l[k]);
+            let most = limit * by.iter().sum::<f64>() * (1.0 + SLACK);
+            if by.iter().skip(1).all(|w| *w <= most) {
                 continue;
             }
             held = false;
             let factor = factors(&by, limit);
             for unit in units.iter_mut() {
-                unit.weight *= (kind.of)(unit).iter().map(|(g, share)| share * factor[g]).sum::<f64>();
+                unit.weight *=
+                    kind.groups(unit).iter().map(|(g, share)| share * factor[*g as usize]).sum::<f64>();
             }
         }
         if held {
@@ -163,12 +176,12 @@ fn settle(units: &mut [Unit], kinds: &[Kind], loose: Option<&[f64]>) -> bool {
 ///
 /// # Source
 /// Algebra: m·cap·T + others = T.
-fn factors(by: &BTreeMap<u32, f64>, cap: f64) -> BTreeMap<u32, f64> {
-    let mut groups: Vec<(u32, f64)> = by.iter().filter(|(g, _)| **g > 0).map(|(g, w)| (*g, *w)).collect();
-    groups.sort_by(|a, b| b.1.total_cmp(&a.1).then(a.0.cmp(&b.0)));
-    let mut others: f64 = by.values().sum();
+fn factors(by: &[f64], cap: f64) -> Vec<f64> {
+    let mut groups: Vec<f64> = by[1..].iter().copied().filter(|w| *w > 0.0).collect();
+    groups.sort_by(|a, b| b.total_cmp(a));
+    let mut others: f64 = by.iter().sum();
     let mut most = f64::INFINITY;
-    for (m, (_, w)) in groups.iter().enumerate() {
+    for (m, w) in groups.iter().enumerate() {
         let left = 1.0 - m as f64 * cap;
         // equal shares use up the whole: the lightest group's weight is then everyone's
         most = if left > 1e-12 { cap * others / left } else { *w };
@@ -176,37 +189,35 @@ fn factors(by: &BTreeMap<u32, f64>, cap: f64) -> BTreeMap<u32, f64> {
             break;
         }
         others -= w;
+        if m + 1 == groups.len() {
+            // all are capped: what is left is nobody's, or all weigh the same
+            let left = 1.0 - (m + 1) as f64 * cap;
+            most = if left > 1e-12 { cap * others.max(0.0) / left } else { *w };
+        }
     }
-    by.iter().map(|(g, w)| (*g, if *g == 0 || *w <= most { 1.0 } else { most / w })).collect()
+    let named = by[1..].iter().map(|w| if *w <= most { 1.0 } else { most / w });
+    std::iter::once(1.0).chain(named).collect()
 }
 
-fn told(kind: &Kind, before: &BTreeMap<u32, f64>, units: &[Unit]) -> Capped {
-    let after = totals(units, &kind.of);
-    let total: f64 = after.values().sum();
-    let known = |by: &BTreeMap<u32, f64>| by.iter().filter(|(g, _)| **g > 0).count();
-    let mut capped: Vec<(f64, f64)> = before
-        .iter()
-        .filter(|(g, w)| **g > 0 && after[g] < **w * (1.0 - 1e-9))
-        .map(|(g, w)| (*w, after[g] / w))
+fn told(kind: &Kind, before: &[f64], units: &[Unit]) -> Capped {
+    let after = kind.totals(units);
+    let total: f64 = after.iter().sum();
+    let mut capped: Vec<(f64, f64)> = (1..before.len())
+        .filter(|g| after[*g] < before[*g] * (1.0 - SLACK))
+        .map(|g| (before[g], after[g] / before[g]))
         .collect();
     capped.sort_by(|a, b| b.0.total_cmp(&a.0).then(a.1.total_cmp(&b.1)));
     let groups = (known(before), capped.len());
     capped.truncate(TOLD);
-    Capped {
-        what: kind.what,
-        cap: kind.cap,
-        groups,
-        unknown: after.get(&0).map_or(0.0, |w| w / total),
-        heaviest: capped,
-    }
+    Capped { what: kind.what, cap: kind.cap, groups, unknown: after[0] / total, heaviest: capped }
 }
 
 fn percent(share: f64) -> String {
     format!("{} %", (share * 10_000.0).round() / 100.0)
 }
 
-fn impossible(kind: &Kind, totals: &BTreeMap<u32, f64>, least: f64) -> Diagnostic {
-    let known = totals.iter().filter(|(g, _)| **g > 0).count();
+fn impossible(kind: &Kind, totals: &[f64], least: f64) -> Diagnostic {
+    let known = known(totals);
     let what = match (kind.what, known) {
         ("observer", 1) => "observer",
         ("observer", _) => "observers",
@@ -236,9 +247,8 @@ mod tests {
     use super::*;
 
     fn check(weights: &[f64], cap: f64, expected: &[f64]) {
-        let by: BTreeMap<u32, f64> = weights.iter().enumerate().map(|(i, w)| (i as u32, *w)).collect();
-        let factor = factors(&by, cap);
-        let after: Vec<f64> = by.iter().map(|(g, w)| w * factor[g]).collect();
+        let factor = factors(weights, cap);
+        let after: Vec<f64> = weights.iter().zip(&factor).map(|(w, f)| w * f).collect();
         let close = after.iter().zip(expected).all(|(a, b)| (a - b).abs() < 1e-9);
         assert!(close, "{after:?} is not {expected:?}");
     }
@@ -251,5 +261,6 @@ mod tests {
         check(&[0.0, 60.0, 30.0, 10.0], 1.0 / 3.0, &[0.0, 10.0, 10.0, 10.0]);
         check(&[50.0, 40.0, 10.0], 0.25, &[50.0, 20.0, 10.0]);
         check(&[0.0, 3.0, 3.0, 4.0], 0.5, &[0.0, 3.0, 3.0, 4.0]);
+        check(&[30.0, 40.0, 30.0], 0.2, &[30.0, 10.0, 10.0]);
     }
 }

@@ -3,8 +3,9 @@
 use crate::diag::{Diagnostic, Outcome};
 use crate::grid::Region;
 
-use super::batch::{Batch, Detail, FINE, Screener};
+use super::batch::{Batch, Detail, FINE};
 use super::caps::Groups;
+use super::desk::Match;
 use super::ledger::{Ledger, Rule};
 use super::names::Names;
 use super::piles::Piles;
@@ -12,8 +13,8 @@ use super::settings::{Count, RecordsPlan};
 use super::shares::{by_dataset, by_observer, effective, facts, top, top_cell, weight};
 use super::signs::Signs;
 use super::smells;
-use super::units::{Records, Unit};
-use super::visits::{Numbered, PARTS, Part, Sorted, count, outings, sorted};
+use super::units::{Reach, Records, Unit};
+use super::visits::{Numbered, PARTS, Part, Sorted, count, days, outings, sorted};
 
 /// Takes note of rows that were dropped.
 pub trait Sink {
@@ -44,8 +45,8 @@ pub struct Collector<'a> {
     sink: &'a mut dyn Sink,
     keep: bool,
     /// Names of the files read.
-    files: Vec<String>,
-    matches: Vec<(u32, Vec<Match>)>,
+    pub(super) files: Vec<String>,
+    pub(super) matches: Vec<(u32, Vec<Match>)>,
     ledger: Ledger,
     rows: u64,
     observers: Names,
@@ -54,18 +55,7 @@ pub struct Collector<'a> {
     piles: Piles,
     dates: [u64; 5],
     signs: Signs,
-    remarks: Vec<Diagnostic>,
-}
-
-/// How a column was found.
-#[derive(Debug, Clone, PartialEq, Eq)]
-pub struct Match {
-    /// What it serves as: a key of the plan, or a term that is read wherever it stands.
-    pub role: String,
-    /// The name looked for.
-    pub wanted: String,
-    /// The name found.
-    pub column: String,
+    pub(super) remarks: Vec<Diagnostic>,
 }
 
 /// What was gathered.
@@ -104,22 +94,11 @@ impl<'a> Collector<'a> {
         }
     }
 
-    /// Notes that a file is read now; its number.
-    pub fn open(&mut self, name: &str) -> usize {
-        self.files.push(name.to_owned());
-        self.files.len() - 1
-    }
-
-    /// Notes how the columns of a file were found.
-    pub fn found(&mut self, file: usize, matches: &[Match]) {
-        self.matches.push((file as u32, matches.to_vec()));
-    }
-
     /// Takes batches that are settled, each with the line from which its rows are counted.
     ///
     /// # Errors
     /// When a dropped record cannot be noted.
-    pub fn absorb(&mut self, batches: Vec<(Batch, u64)>) -> Outcome<()> {
+    pub(super) fn absorb(&mut self, batches: Vec<(Batch, u64)>) -> Outcome<()> {
         let mut numbered = Vec::with_capacity(batches.len());
         for (batch, line) in batches {
             for d in &batch.dropped {
@@ -136,20 +115,6 @@ impl<'a> Collector<'a> {
         self.piles.count(&numbered.iter().map(|n| &n.batch).collect::<Vec<_>>());
         count(&mut self.parts, &numbered, self.keep);
         Ok(())
-    }
-
-    /// Screens, settles and takes one row after another, for sources that are not read in parallel.
-    ///
-    /// # Errors
-    /// As [`Self::absorb`], or when coordinates cannot be turned.
-    pub fn take(&mut self, screener: &Screener, mut batch: Batch) -> Outcome<()> {
-        screener.settle(&mut batch)?;
-        self.absorb(vec![(batch, 0)])
-    }
-
-    /// Notes what about a file deserves attention.
-    pub fn remarks(&mut self, remarks: impl IntoIterator<Item = Diagnostic>) {
-        self.remarks.extend(remarks);
     }
 
     /// Ends the gathering.
@@ -213,6 +178,12 @@ impl<'a> Collector<'a> {
             top: [observer.then(|| top(&observers)), dataset.then(|| top(&datasets)), Some(top_cell(&units))],
             dates: self.dates,
             ledger: self.ledger,
+            reach: Reach {
+                extent: self.signs.extent,
+                days: days(visits),
+                observers: observers.keys().filter(|k| **k > 0).count(),
+                datasets: datasets.keys().filter(|k| **k > 0).count(),
+            },
             lattices: smells::lattices(&self.signs),
             piles,
             capped,

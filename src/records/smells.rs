@@ -146,16 +146,19 @@ impl Says {
         let unit = if degrees { DEGREE } else { 1000.0 };
         let coarse = |i: &usize| unit / table[*i].0 >= cell && counts[*i].count as f64 >= MANY * all as f64;
         let finest = (0..table.len()).rev().find(coarse)?;
+        // of lattices that hold about the same records the coarsest says most
+        let alike = |i: &usize| counts[*i].count as f64 >= 0.9 * counts[finest].count as f64;
+        let step = (0..finest).find(alike).unwrap_or(finest);
         let shares: Vec<String> =
             lattices(signs).iter().map(|(step, share)| format!("{step} {}", percent(*share))).collect();
         let text = format!(
             "{} of the records have both coordinates on multiples of {}, coarser than the cells ({cell:.0} m); by step: {}",
-            percent(counts[finest].count as f64 / all as f64),
-            table[finest].2,
+            percent(counts[step].count as f64 / all as f64),
+            table[step].2,
             shares.join(", ")
         );
         let cure = "such coordinates are rounded: drop them (`max_uncertainty`, `leave_out`), or use cells no finer than that";
-        Some(Diagnostic::input("coarse_coordinates", self.at(&counts[finest]), text).cure(cure))
+        Some(Diagnostic::input("coarse_coordinates", self.at(&counts[step]), text).cure(cure))
     }
 
     fn piles(&self, records: &Records) -> Option<Diagnostic> {

@@ -2,6 +2,8 @@
 
 use std::sync::Arc;
 
+use jiff::civil::Date;
+
 use crate::units::Metres;
 
 use super::caps::{Capped, Groups};
@@ -48,6 +50,19 @@ pub struct VisitFacts {
     pub single_share: f64,
 }
 
+/// What the kept records reach over, and who they are from.
+#[derive(Debug, Clone, PartialEq, Default)]
+pub struct Reach {
+    /// West, south, east, north of all places on the grid's CRS, those outside the region too.
+    pub extent: Option<[f64; 4]>,
+    /// First and last day.
+    pub days: Option<(Date, Date)>,
+    /// Distinct observers (lists as sets) and data sets, the unknown not counted.
+    pub observers: usize,
+    /// Distinct data sets.
+    pub datasets: usize,
+}
+
 /// The records of a study, ready to be split.
 #[derive(Debug, Clone)]
 pub struct Records {
@@ -72,6 +87,8 @@ pub struct Records {
     pub top: [Option<(u32, f64)>; 3],
     /// Rows with a date to the day, as a range, month, year, and without a readable one.
     pub dates: [u64; 5],
+    /// What they reach over.
+    pub reach: Reach,
     /// Lattices on which kept coordinates lie, coarsest first, with the share of those that do.
     pub lattices: Vec<(&'static str, f64)>,
     /// The places that most records share to the last digit.

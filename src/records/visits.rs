@@ -175,6 +175,17 @@ pub(super) fn observer_set(text: &str) -> std::borrow::Cow<'_, str> {
     names.into_iter().collect::<Vec<_>>().join(" | ").into()
 }
 
+/// First and last day of all dated visits.
+pub(super) fn days(visits: &[Visit]) -> Option<(jiff::civil::Date, jiff::civil::Date)> {
+    let dated = || visits.iter().filter_map(|v| v.key.2);
+    let (first, last) = (dated().map(|d| d.0).min()?, dated().map(|d| d.1).max()?);
+    let day = |n: i32| {
+        let (year, rest) = (n.div_euclid(512), n.rem_euclid(512));
+        jiff::civil::Date::new(year as i16, (rest / 32) as i8, (rest % 32) as i8).ok()
+    };
+    Some((day(first)?, day(last)?))
+}
+
 /// First and last day as numbers that order days.
 pub(super) fn day_numbers(range: DateRange) -> (i32, i32) {
     let number =

@@ -26,6 +26,8 @@ pub(in crate::gate) struct Head {
     pub(in crate::gate) width: usize,
     /// Lines of the header.
     pub(in crate::gate) lines: u64,
+    /// The header as it stands.
+    pub(in crate::gate) raw: Vec<u8>,
     /// What follows.
     pub(in crate::gate) blocks: Blocks,
 }
@@ -44,7 +46,18 @@ impl Head {
         if glance.starts_with(b"\xef\xbb\xbf") {
             glance.drain(..3);
         }
+        if glance.get(257..262) == Some(b"ustar") {
+            return Err(Diagnostic::input("not_a_table", source.name, "is a tar archive")
+                .cure("unpack it and give the file inside")
+                .into());
+        }
         let dialect = dialect(&glance, source.form);
+        if glance.split(|b| *b == dialect.terminator).next().is_some_and(|line| line.contains(&0)) {
+            let text = "its first line holds NUL bytes: it is no text, or text in UTF-16";
+            return Err(Diagnostic::input("not_a_table", format!("{}:1", source.name), text)
+                .cure("give delimited text, saved as UTF-8")
+                .into());
+        }
         let mut blocks = Blocks::new(stream, glance, dialect.terminator);
         let first = match blocks.next().map_err(|e| broken(source.name, &e))? {
             Some(Block::Lines { bytes, .. }) => bytes,
@@ -57,7 +70,10 @@ impl Head {
     fn read(source: &TextSource, dialect: Dialect, first: Vec<u8>, mut blocks: Blocks) -> Outcome<Self> {
         let (header, encoding, columns) = match source.form {
             Form::Found(_) => (1, None, 0),
-            Form::Given { encoding, header, columns, .. } => (header, Some(encoding), columns),
+            // a description says UTF-8 by default: the text itself is believed
+            Form::Given { encoding, header, columns, .. } => {
+                (header, Some(encoding).filter(|e| *e == Encoding::Latin1), columns)
+            }
         };
         let mut rows = Rows::new(&first, None, dialect);
         let (mut lines, mut width, mut names, mut at) = (0, 0, Vec::new(), 0);
@@ -80,13 +96,14 @@ impl Head {
         if width < columns && !first.is_empty() {
             return Err(narrow(source.name, width, columns).into());
         }
+        let raw = first[..at].to_vec();
         blocks.put_back(first, at);
         if matches!(source.form, Form::Found(_)) {
             unique(&names, source.name)?;
         } else {
             names.clear();
         }
-        Ok(Self { dialect, encoding, names, width, lines, blocks })
+        Ok(Self { dialect, encoding, names, width, lines, raw, blocks })
     }
 }
 

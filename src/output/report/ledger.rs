@@ -62,6 +62,20 @@ fn facts(f: &Finding) -> Vec<Value> {
             "many of them are chance sightings rather than searches",
         ));
     }
+    if let Some((first, last)) = r.reach.days {
+        out.push(fact("First and last day", format!("{first} to {last}"), "of the records kept"));
+    }
+    out.extend(r.capped.iter().map(|c| {
+        let (name, who) = match c.what {
+            "observer" => ("Cap on one observer", "observers"),
+            _ => ("Cap on one data set", "data sets"),
+        };
+        let value = format!("{}; {} of {} {who} weigh less", words::percent(c.cap), c.groups.1, c.groups.0);
+        let heaviest = c.heaviest.first().map(|(n, each)| {
+            format!("the heaviest, with {}, counts {} for each", words::weight(*n), words::digits(*each, 2))
+        });
+        fact(name, value, &heaviest.unwrap_or_default())
+    }));
     let simpson = "how many there would be if all were equally active (inverse Simpson)";
     let people = |v: f64| words::digits(v, 3);
     out.extend(r.effective_observers.map(|v| fact("Effective number of observers", people(v), simpson)));

@@ -88,13 +88,32 @@ fn records(f: &Finding) -> String {
     let (units, places) = (words::weight(r.weight()), words::count(r.places as u64));
     let counted = match r.count {
         Count::Visits => format!(
-            "Records of one observer on one date in one cell were counted as one visit, which gave {units} visits to {places} cells."
+            "Records of one observer on one date in one cell were counted as one visit, which gave {} visits to {places} cells.",
+            words::count(r.visits.count)
         ),
         Count::Records => format!("Every record was counted ({units} in {places} cells)."),
         Count::Places => format!("Every cell with a record was counted once ({units} cells)."),
     };
+    let caps: Vec<String> = r
+        .capped
+        .iter()
+        .map(|c| {
+            format!(
+                "{} of the total to one {}",
+                words::percent(c.cap),
+                if c.what == "observer" { "observer" } else { "data set" }
+            )
+        })
+        .collect();
+    let capped = match caps.as_slice() {
+        [] => String::new(),
+        caps => format!(
+            " They were weighted so as to leave at most {}, which left a weight of {units}.",
+            caps.join(" and ")
+        ),
+    };
     format!(
-        "Survey effort was estimated from records of the target group (Phillips et al. 2009) on a grid of {} × {} cells in {}, {} of them ({}) inside the study region. Of {} records read, {} were kept after screening. {counted}",
+        "Survey effort was estimated from records of the target group (Phillips et al. 2009) on a grid of {} × {} cells in {}, {} of them ({}) inside the study region. Of {} records read, {} were kept after screening. {counted}{capped}",
         words::count(grid.columns as u64),
         words::count(grid.rows as u64),
         words::name(&grid.crs.label),

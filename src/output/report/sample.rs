@@ -96,6 +96,7 @@ fn records(region: &Arc<Region>, layers: &ProxyStack, wanted: usize) -> Records 
         effective_observers: Some(6.3),
         effective_datasets: None,
         top: [Some((1, 0.31)), None, Some((0, 0.012))],
+        reach: Default::default(),
         lattices: Vec::new(),
         piles: Vec::new(),
         capped: Vec::new(),

@@ -8,6 +8,7 @@ mod closest;
 mod conflicts;
 mod ground;
 mod search;
+mod spots;
 mod squares;
 mod starts;
 
@@ -23,6 +24,7 @@ use ground::Space;
 use search::Search;
 
 pub use ground::Ground;
+pub use spots::{Spot, SpotList, Spotter};
 pub use squares::thin_by_square;
 
 /// Places that all tries together look at before a search ends, where nothing else ends it sooner.
