@@ -138,6 +138,75 @@ fn every_row_is_accounted_for() {
     assert_eq!(count(records, "places"), 1_235);
 }
 
+/// What `tests/real/count.py` counts in the archive; `None`, said aloud, where it cannot run.
+fn counted_apart(data: &Path, limit: &[&str]) -> Option<Value> {
+    let script = Path::new(env!("CARGO_MANIFEST_DIR")).join("tests/real/count.py");
+    let mut command = Command::new("/usr/bin/python3");
+    command.arg("-B").arg(script).arg(data.join("archive")).arg(data.join("land.tif")).args(limit);
+    let ran = match command.output() {
+        Ok(ran) => ran,
+        Err(e) => {
+            println!("skipped: no /usr/bin/python3 ({e})");
+            return None;
+        }
+    };
+    let said = String::from_utf8_lossy(&ran.stderr);
+    if ran.status.code() == Some(69) {
+        println!("skipped: {said}");
+        return None;
+    }
+    assert!(ran.status.success(), "count.py: {said}");
+    Some(serde_json::from_slice(&ran.stdout).expect("count.py writes JSON"))
+}
+
+/// The archive as a folder, as a zip file and its core as plain text: each row meets the fate that
+/// Python's csv module and GDAL's bindings find (`tests/real/count.py`).
+#[test]
+fn the_archive_is_read_as_another_reads_it() {
+    let Some(data) = data() else { return };
+    for (limit, line) in [(&[][..], ""), (&["2000"], "max_uncertainty = \"2 km\"")] {
+        let Some(due) = counted_apart(data, limit) else { return };
+        let facts = ["read", "quotes", "no uncertainty", "999999"].map(|fact| count(&due, fact));
+        assert_eq!(facts, [7_929, 379, 5_185, 140]);
+        let mut whole: Option<Value> = None;
+        for (form, place) in [
+            ("archive", "archive: occurrence.txt"),
+            ("archive.zip", "archive.zip: occurrence.txt"),
+            ("occurrence.txt", "occurrence.txt"),
+        ] {
+            let world = World::empty(32632);
+            let plan = plan(data, line, "").replace("/occurrence.txt", &format!("/{form}"));
+            world.put("plan.toml", &plan);
+            let found = world.run(&["build", "plan.toml", "--json"]).ended(0).json();
+            same_fates(&world, &found["records"], &due, place);
+            let whole = whole.get_or_insert_with(|| found["records"].clone());
+            assert_eq!(found["records"], *whole, "{form}");
+        }
+    }
+}
+
+/// Asserts that kept rows, places and each dropped row with its rule are those that are due.
+#[track_caller]
+fn same_fates(world: &World, records: &Value, due: &Value, place: &str) {
+    for field in ["read", "kept", "places"] {
+        assert_eq!(count(records, field), count(due, field), "{place}: {field}");
+    }
+    let mut table = csv::Reader::from_path(world.path("out/dropped.csv")).unwrap();
+    let mut found = Vec::new();
+    for row in table.records() {
+        let row = row.unwrap();
+        assert!(row[0].ends_with(place), "{} is not {place}", &row[0]);
+        found.push((row[1].parse::<u64>().unwrap(), row[2].to_owned()));
+    }
+    let rows = due["dropped"].as_array().unwrap().iter();
+    let due: Vec<(u64, String)> =
+        rows.map(|r| (r[0].as_u64().unwrap(), r[1].as_str().unwrap().to_owned())).collect();
+    assert_eq!(found, due, "{place}");
+    for (rule, n) in records["dropped"].as_object().unwrap() {
+        assert_eq!(n.as_u64().unwrap(), due.iter().filter(|(_, r)| r == rule).count() as u64, "{rule}");
+    }
+}
+
 #[test]
 fn layers_are_what_the_map_says() {
     let Some(data) = data() else { return };

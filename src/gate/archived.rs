@@ -1,5 +1,7 @@
 //! Records in a Darwin Core archive: rows of one table, each completed by the row it belongs to.
 
+use std::sync::atomic::{AtomicU64, Ordering};
+
 use hashbrown::HashMap;
 
 use crate::diag::{Diagnostic, Observer, Outcome};
@@ -35,7 +37,19 @@ pub(super) fn read<D: Desk>(container: &Container, archive: &Archive, to: &mut R
         let remark = scan(&text, head, &work, &mut |parts| tray.take(parts), to.observer)?;
         remark.into_iter().for_each(|r| to.tray.remark(r));
     }
+    let lost = parents.and_then(|(parents, _)| lost(container, parents.lost.into_inner()));
+    lost.into_iter().for_each(|r| to.tray.remark(r));
     Ok(())
+}
+
+fn lost(container: &Container, records: u64) -> Option<Diagnostic> {
+    let text = format!(
+        "{records} records belong to a row of the core that is not there: they lack what it would say"
+    );
+    (records > 0).then(|| {
+        Diagnostic::input("core_rows", container.file.as_str(), text)
+            .cure("mend the core, or download the archive again")
+    })
 }
 
 /// A table's text at one location; `quotes` overrides the description.
@@ -86,6 +100,8 @@ struct Parents {
     /// Where each field of the core stands among those kept.
     places: Vec<Option<usize>>,
     rows: HashMap<Box<str>, Fields>,
+    /// Records whose row is not there.
+    lost: AtomicU64,
 }
 
 impl Parents {
@@ -98,7 +114,7 @@ impl Parents {
     ) -> Outcome<(Self, Option<Diagnostic>)> {
         let mut places = vec![None; core.columns.len()];
         wanted.iter().enumerate().for_each(|(n, field)| places[*field] = Some(n));
-        let mut all = Self { places, rows: HashMap::new() };
+        let mut all = Self { places, rows: HashMap::new(), lost: AtomicU64::new(0) };
         let (mut twice, mut unreadable, mut first) = (0_u64, 0_u64, None);
         for location in &core.locations {
             let name = container.place(location);
@@ -221,11 +237,17 @@ impl<D: Desk> Work for Handing<'_, D> {
 
     fn row(&self, part: &mut D::Part, line: u64, rows: &Rows) {
         let parent = self.parents.and_then(|(parents, id)| {
-            parents.rows.get(rows.field(*id).trim()).map(|row| (parents, row.as_ref()))
+            let found = parents.rows.get(rows.field(*id).trim());
+            parents.lost.fetch_add(u64::from(found.is_none()), Ordering::Relaxed);
+            found.map(|row| (parents, row.as_ref()))
         });
         self.layout.fields(&Joined { rows, parent }, None, |fields| {
             self.desk.push(part, &Row { line, content: Content::Fields(fields) });
         });
+    }
+
+    fn swallowed(&self, part: &mut D::Part, line: u64, lines: u64) {
+        self.desk.swallowed(part, line, lines);
     }
 
     fn unreadable(&self, part: &mut D::Part, line: u64, why: &str, lines: u64) {

@@ -59,13 +59,13 @@ fn bad_where(place: &str, columns: &str, error: &str) -> Diagnostic {
 }
 
 /// Forgets what GDAL last complained of.
-fn forget_errors() {
+pub(super) fn forget_errors() {
     // SAFETY: resets a number and a text that GDAL owns
     unsafe { gdal_sys::CPLErrorReset() };
 }
 
 /// What GDAL complained of since, where it was an error.
-fn last_error() -> Option<String> {
+pub(super) fn last_error() -> Option<String> {
     // SAFETY: both calls read what GDAL owns for this thread; the text is copied at once
     unsafe {
         if gdal_sys::CPLGetLastErrorType() < gdal_sys::CPLErr::CE_Failure {
@@ -74,6 +74,13 @@ fn last_error() -> Option<String> {
         let text = std::ffi::CStr::from_ptr(gdal_sys::CPLGetLastErrorMsg());
         Some(text.to_string_lossy().into_owned())
     }
+}
+
+/// A feature's geometry, where it has one that is not empty; asking one that is not there whether it is
+/// empty would be an error to GDAL.
+pub(super) fn geometry_of<'a>(feature: &'a Feature) -> Option<&'a Geometry> {
+    // SAFETY: the pointer is compared, not followed
+    feature.geometry().filter(|g| unsafe { !g.c_geometry().is_null() } && !g.is_empty())
 }
 
 /// What was left out of a layer.
@@ -167,7 +174,7 @@ struct Reader<'a> {
 
 impl Reader<'_> {
     fn feature(&mut self, feature: &Feature) -> Outcome<()> {
-        match feature.geometry().filter(|g| !g.is_empty()) {
+        match geometry_of(feature) {
             None => self.left.empty += 1,
             Some(geometry) => self.geometry(geometry, feature.fid())?,
         }

@@ -24,6 +24,9 @@ const NETWORK_DRIVERS: &str = "HTTP WMS WMTS WCS OGCAPI EEDA EEDAI PLMOSAIC DAAS
                                WFS OAPIF CSW Elastic Carto AmigoCloud GMLAS MongoDBv3 PostgreSQL MySQL MSSQLSpatial \
                                ODBC PGeo HANA OCI";
 
+/// As many unknown datums are told one by one.
+const DATUMS_TOLD: usize = 10;
+
 /// Makes GDAL silent and keeps it off the network; before its first use.
 fn settle_gdal() {
     static ONCE: Once = Once::new();
@@ -157,11 +160,17 @@ impl Files {
     }
 }
 
-/// The files at the top of a folder, by name.
+/// The files in a folder and in those below it, by name; links to folders are not followed.
 fn inside(folder: &Path) -> Vec<String> {
-    let entries = std::fs::read_dir(folder).into_iter().flatten().flatten();
-    let files = entries.filter(|e| e.path().is_file());
-    let mut names: Vec<String> = files.map(|e| e.file_name().to_string_lossy().into_owned()).collect();
+    let mut names = Vec::new();
+    for entry in std::fs::read_dir(folder).into_iter().flatten().flatten() {
+        let name = entry.file_name().to_string_lossy().into_owned();
+        if entry.file_type().is_ok_and(|t| t.is_dir()) {
+            names.extend(inside(&entry.path()).iter().map(|n| format!("{name}/{n}")));
+        } else if entry.path().is_file() {
+            names.push(name);
+        }
+    }
     names.sort();
     names
 }
@@ -241,14 +250,23 @@ impl Sources for Files {
 
     fn remarks(&self) -> Vec<Diagnostic> {
         let unknown = self.unknown_datums.lock().expect("no thread panics while it counts");
-        unknown
-            .iter()
-            .map(|(datum, records)| {
-                let text = format!(
-                    "{records} records name the datum `{datum}`, which is not known: read as the plan's `crs`"
-                );
-                Diagnostic::input("unknown_datum", "geodeticDatum", text)
-                    .cure("write datums as EPSG codes, such as EPSG:4326")
+        let mut most: Vec<(&String, &u64)> = unknown.iter().collect();
+        most.sort_by(|a, b| b.1.cmp(a.1).then(a.0.cmp(b.0)));
+        let (told, rest) = most.split_at(most.len().min(DATUMS_TOLD));
+        let of_all = (!rest.is_empty()).then(|| {
+            let records: u64 = rest.iter().map(|(_, n)| **n).sum();
+            format!("{records} records name {} other datums that are not known", rest.len())
+        });
+        let each =
+            told.iter().map(|(datum, n)| format!("{n} records name the datum `{datum}`, which is not known"));
+        each.chain(of_all)
+            .map(|text| {
+                Diagnostic::input(
+                    "unknown_datum",
+                    "geodeticDatum",
+                    format!("{text}: read as the plan's `crs`"),
+                )
+                .cure("write datums as EPSG codes, such as EPSG:4326")
             })
             .collect()
     }

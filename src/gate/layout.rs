@@ -259,9 +259,12 @@ fn listed(names: &[String]) -> String {
 fn missing_columns(file: &str, missing: &[String], columns: &[Named]) -> Diagnostic {
     let names: Vec<String> = columns.iter().map(|c| c.name.clone()).collect();
     let text = format!("has no column {}; it has {}", listed(missing), listed(&names));
-    Diagnostic::input("missing_column", format!("{file}:1"), text).cure(
-        "name the columns in [records], or leave out what needs them (`dates`, `max_uncertainty`, `keep`)",
-    )
+    let quoted = names.iter().any(|n| n.len() > 1 && n.starts_with('"') && n.ends_with('"'));
+    Diagnostic::input("missing_column", format!("{file}:1"), text).cure(if quoted {
+        "the names stand in quotes: set `quotes = \"double\"` in [records]"
+    } else {
+        "name the columns in [records], or leave out what needs them (`dates`, `max_uncertainty`, `keep`)"
+    })
 }
 
 fn no_visits(source: &SourcePlan, file: &str, columns: &[Named]) -> Diagnostic {

@@ -8,7 +8,7 @@ use crate::grid::{Crs, CrsKind};
 use crate::records::{Content, Desk, Place, Row, SourcePlan};
 
 use super::crs;
-use super::features::{no_crs, open_layer};
+use super::features::{forget_errors, geometry_of, last_error, no_crs, open_layer};
 use super::files::Files;
 use super::layout::{Layout, Named, Point, Texts};
 use super::record_files::Reading;
@@ -55,12 +55,15 @@ impl<'a> Points<'a> {
     /// Hands every feature to `each`: its number, its attributes as text, and its place.
     pub(super) fn each(&self, each: &mut Each) -> Outcome<()> {
         let mut layer = open_layer(&self.dataset, self.file, self.table.as_deref())?;
+        forget_errors();
         for feature in layer.features() {
+            unharmed(self.file)?;
             let texts: Vec<String> = (0..self.names.len()).map(|i| text(&feature, i)).collect();
             let place = if self.own.is_some() { Some(place(&feature, self.file)?) } else { None };
             each(feature.fid().unwrap_or(0), &texts, place)?;
+            forget_errors(); // a place that cannot be turned is none of the file's
         }
-        Ok(())
+        unharmed(self.file)
     }
 }
 
@@ -100,9 +103,17 @@ pub(super) fn read<D: Desk>(points: &Points, to: &mut Reading<D>) -> Outcome<()>
     to.hand(part)
 }
 
+/// Whether features came without an error so far: the driver ends at one as it does at the file's end.
+fn unharmed(file: &str) -> Outcome<()> {
+    last_error().map_or(Ok(()), |error| {
+        let text = format!("cannot be read to its end: {error}");
+        Err(Diagnostic::input("cut_off", file, text).cure("check that the file is whole").into())
+    })
+}
+
 /// Where a feature lies; only points have a place.
 fn place<'a>(feature: &Feature, file: &str) -> Outcome<Place<'a>> {
-    let Some(geometry) = feature.geometry().filter(|g| !g.is_empty()) else { return Ok(Place::Missing) };
+    let Some(geometry) = geometry_of(feature) else { return Ok(Place::Missing) };
     let name = geometry.geometry_name();
     let point = if name == "POINT" {
         geometry.get_point(0)

@@ -80,6 +80,10 @@ fn packed(container: Container, table: Option<&str>) -> Outcome<Kind> {
 }
 
 fn several(container: &Container, members: &[Member], table: Option<&str>) -> Diagnostic {
+    if members.iter().any(|m| m.name == "xl/workbook.xml" || m.name == "content.xml") {
+        return Diagnostic::input("spreadsheet", container.file.as_str(), "is a spreadsheet")
+            .cure("save the sheet of records as delimited text (CSV in UTF-8) and give that");
+    }
     let shown: Vec<String> = members.iter().take(20).map(|m| format!("`{}`", m.name)).collect();
     let held = if shown.is_empty() { "nothing".into() } else { shown.join(", ") };
     let text = match table {

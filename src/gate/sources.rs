@@ -41,7 +41,7 @@ pub enum LayerData {
 pub struct Peek {
     /// Its name in the plan.
     pub file: String,
-    /// `raster`, `vector` or `text`.
+    /// What it is: `raster`, `vector`, `text`, `zipped text`, `archive` or `Parquet`.
     pub kind: &'static str,
     /// Its CRS, where it states one.
     pub crs: String,

@@ -60,6 +60,10 @@ impl<D: Desk> Work for Handing<'_, D> {
         });
     }
 
+    fn swallowed(&self, part: &mut D::Part, line: u64, lines: u64) {
+        self.desk.swallowed(part, line, lines);
+    }
+
     fn unreadable(&self, part: &mut D::Part, line: u64, why: &str, lines: u64) {
         self.desk.push(part, &Row { line, content: Content::Unreadable(why, lines) });
     }

@@ -72,7 +72,23 @@ fn sources(log: &mut Log, table: &Table) -> Option<Vec<SourcePlan>> {
             format!("`{key}` says how the files of [records] are read, which names none; each `[[records.source]]` has keys of its own")
         });
     }
+    twice(log, own.is_some().then_some(table).into_iter().chain(&others));
     own.into_iter().chain(others.iter().map(source)).collect()
+}
+
+/// A file (and table in it) that is named twice would count twice.
+fn twice<'a, 't: 'a>(log: &mut Log, tables: impl Iterator<Item = &'a Table<'t>>) {
+    let mut seen = std::collections::BTreeSet::new();
+    for table in tables {
+        for file in files(table).unwrap_or_default() {
+            let one = (file.trim_start_matches("./").to_owned(), table.string("table"));
+            if !seen.insert(one) {
+                let at = table.item("file").map_or_else(|| table.span().clone(), |item| item.span());
+                let text = format!("`{file}` is named twice: its records would count twice");
+                log.say(&at, "file_twice", text, "name each file once");
+            }
+        }
+    }
 }
 
 fn source(table: &Table) -> Option<SourcePlan> {

@@ -82,7 +82,7 @@ struct Waiting {
     passed: Passed,
     observer: u32,
     dataset: u32,
-    datum: u16,
+    datum: u32,
     degrees: bool,
 }
 
@@ -97,7 +97,7 @@ pub struct Batch {
     pub(super) placed: [Vec<Placed>; PARTS],
     pub(super) dates: [u64; 5],
     pub(super) signs: Signs,
-    datums: Vec<String>,
+    datums: Names,
     waiting: Vec<Waiting>,
     /// Rows whose coordinates are legal only when swapped.
     twisted: Vec<(u64, f64, f64)>,
@@ -107,14 +107,6 @@ impl Batch {
     fn drop(&mut self, line: u64, rule: Rule, detail: Detail) {
         self.ledger.drop(rule);
         self.dropped.push(Dropped { line, rule, detail });
-    }
-
-    fn datum(&mut self, datum: &str) -> u16 {
-        let known = self.datums.iter().rposition(|d| d == datum);
-        known.unwrap_or_else(|| {
-            self.datums.push(datum.to_owned());
-            self.datums.len() - 1
-        }) as u16
     }
 }
 
@@ -158,7 +150,7 @@ impl<'a> Screener<'a> {
             placed: Default::default(),
             dates: [0; 5],
             signs: Signs::default(),
-            datums: Vec::new(),
+            datums: Names::default(),
             waiting: Vec::new(),
             twisted: Vec::new(),
         }
@@ -174,6 +166,11 @@ impl<'a> Screener<'a> {
             }
             Content::Fields(fields) => self.take(batch, row.line, fields),
         }
+    }
+
+    /// Notes so many lines inside the quotes of a row that look like rows themselves.
+    pub(super) fn hold(&self, batch: &mut Batch, line: u64, lines: u64) {
+        batch.signs.swallowed.add(batch.file, line, (0.0, 0.0), lines);
     }
 
     fn take(&self, batch: &mut Batch, line: u64, fields: &Fields) {
@@ -193,11 +190,14 @@ impl<'a> Screener<'a> {
                     Radius::Unreadable => batch.signs.no_radius.add(batch.file, line, passed.xy, 1),
                     _ => {}
                 }
+                if date.is_none() && !fields.date.trim().is_empty() {
+                    batch.signs.no_date.add(batch.file, line, passed.xy, 1);
+                }
                 let waiting = Waiting {
                     line,
                     observer: batch.observers.number(&observer_set(fields.observer)),
                     dataset: batch.datasets.number(trimmed(fields.dataset)),
-                    datum: batch.datum(trimmed(fields.datum)),
+                    datum: batch.datums.number(trimmed(fields.datum)),
                     passed,
                     degrees,
                 };
@@ -228,8 +228,11 @@ impl<'a> Screener<'a> {
     /// When coordinates cannot be turned.
     pub(super) fn place_all(&self, batch: &mut Batch) -> Outcome<()> {
         let waiting = std::mem::take(&mut batch.waiting);
-        for (number, datum) in std::mem::take(&mut batch.datums).iter().enumerate() {
-            let rows: Vec<&Waiting> = waiting.iter().filter(|w| usize::from(w.datum) == number).collect();
+        let datums = std::mem::take(&mut batch.datums);
+        let mut by_datum: Vec<Vec<&Waiting>> = vec![Vec::new(); datums.len() + 1];
+        waiting.iter().for_each(|w| by_datum[w.datum as usize].push(w));
+        for (number, rows) in by_datum.iter().enumerate().filter(|(_, rows)| !rows.is_empty()) {
+            let datum = datums.name(number as u32);
             let (mut x, mut y): (Vec<f64>, Vec<f64>) = rows.iter().map(|w| w.passed.xy).unzip();
             self.projection.turn(batch.source, datum, &mut x, &mut y)?;
             let mut strays = std::mem::take(&mut batch.twisted);

@@ -44,6 +44,9 @@ pub trait Desk: Sync {
     /// Looks at a row.
     fn push(&self, part: &mut Self::Part, row: &Row);
 
+    /// Notes so many lines inside the quotes of a row that look like rows themselves.
+    fn swallowed(&self, _part: &mut Self::Part, _line: u64, _lines: u64) {}
+
     /// Ends a part.
     ///
     /// # Errors
@@ -78,6 +81,10 @@ impl Desk for Screener<'_> {
 
     fn push(&self, part: &mut Batch, row: &Row) {
         self.screen(part, row);
+    }
+
+    fn swallowed(&self, part: &mut Batch, line: u64, lines: u64) {
+        self.hold(part, line, lines);
     }
 
     fn settle(&self, part: &mut Batch) -> Outcome<()> {

@@ -146,7 +146,11 @@ fn coordinates(place: Place, degrees: bool) -> Result<(f64, f64), (Rule, String)
         x.is_finite() && y.is_finite()
     };
     if !legal {
-        return Err((Rule::ImpossibleCoordinate, format!("{x} {y}")));
+        let written = match place {
+            Place::Text { x, y } => format!("{} {}", x.trim(), y.trim()),
+            _ => format!("{x} {y}"),
+        };
+        return Err((Rule::ImpossibleCoordinate, written));
     }
     if x == 0.0 && y == 0.0 {
         return Err((Rule::ZeroZero, String::new()));

@@ -101,6 +101,8 @@ pub(super) struct Signs {
     pub(super) not_positive: Sign,
     /// Uncertainties that are no number.
     pub(super) no_radius: Sign,
+    /// Dates that are there and cannot be read, of rows that passed.
+    pub(super) no_date: Sign,
     /// Lines beyond the first of rows that could not be read.
     pub(super) swallowed: Sign,
     /// West, south, east, north of all places on the grid's CRS.
@@ -150,12 +152,12 @@ impl Signs {
         }
     }
 
-    fn all(&self) -> [Sign; 20] {
+    fn all(&self) -> [Sign; 21] {
         let mut copy = self.clone();
         copy.all_mut().map(|s| *s)
     }
 
-    fn all_mut(&mut self) -> [&mut Sign; 20] {
+    fn all_mut(&mut self) -> [&mut Sign; 21] {
         let [a, b, c, d] = &mut self.on_degrees;
         let [e, f, g, h] = &mut self.on_units;
         let [i, j, k, l, m] = &mut self.turned;
@@ -179,6 +181,7 @@ impl Signs {
             &mut self.near,
             &mut self.not_positive,
             &mut self.no_radius,
+            &mut self.no_date,
             &mut self.swallowed,
         ]
     }

@@ -3,7 +3,7 @@
 use crate::diag::Diagnostic;
 use crate::grid::Region;
 
-use super::ledger::Ledger;
+use super::ledger::{Ledger, Rule};
 use super::signs::{DEGREES, Seen, Sign, Signs, Turn, UNITS};
 use super::units::{Records, median_uncertainty};
 
@@ -34,6 +34,7 @@ pub(super) fn all(
     found.extend(say.near(signs, &records.ledger));
     found.extend(say.vague(region, records));
     found.extend(say.radii(signs));
+    found.extend(say.dateless(signs, &records.ledger));
     found.extend(say.swallowed(signs));
     found.extend(say.concentrated(region, records, datasets));
     found
@@ -66,6 +67,11 @@ pub(super) fn nothing_left(
     }
     let mut text = format!("no record is left after screening ({})", ledger.lines().join("; "));
     let mut cure = "check the column names, `crs`, `dates` and `keep` of [records]".to_owned();
+    if 2 * ledger.dropped(Rule::UnreadableRow) > ledger.read() {
+        cure =
+            "see that every row has as many fields as the header, quotes come in pairs and lines end alike"
+                .into();
+    }
     if let Some([w, s, e, n]) = signs.extent {
         text += &format!(
             "; in the grid's CRS the records span x {w:.4} to {e:.4}, y {s:.4} to {n:.4}, \
@@ -231,11 +237,25 @@ impl Says {
         .collect()
     }
 
-    /// Rows that cannot be read and hold the lines of others.
+    /// Dates in a way that is not read.
+    fn dateless(&self, signs: &Signs, ledger: &Ledger) -> Option<Diagnostic> {
+        let sign = &signs.no_date;
+        (sign.count > 0 && sign.count as f64 >= SOME * ledger.kept() as f64).then(|| {
+            let text = format!(
+                "{} records have a date that cannot be read: when they were made counts as unknown, \
+                 so that one observer's outings to a cell become one",
+                sign.count
+            );
+            Diagnostic::input("dates_unreadable", self.at(sign), text)
+                .cure("write dates as ISO 8601, such as 2015-03-17")
+        })
+    }
+
+    /// Rows that hold the lines of others.
     fn swallowed(&self, signs: &Signs) -> Option<Diagnostic> {
         let sign = &signs.swallowed;
         (sign.count > 0).then(|| {
-            let text = format!("{} lines lie inside quotes of rows that could not be read", sign.count);
+            let text = format!("{} lines lie inside quotes and were not read as rows of their own", sign.count);
             Diagnostic::input("swallowed_lines", self.at(sign), text).cure(
                 "mend the quote in that row, or set `quotes = \"none\"` in [records] if quotes are ordinary characters here",
             )

@@ -102,3 +102,17 @@ fn a_layer_without_crs() {
     world.change(&[("roads.geojson", "roads.csv")]);
     refused(&world, 3, &["roads.csv", "crs"]);
 }
+
+/// A feature without geometry is left out, and said; the others are a layer all the same.
+#[test]
+fn a_feature_without_geometry() {
+    let world = World::new();
+    let text = std::fs::read_to_string(world.path("roads.geojson")).unwrap();
+    let bare = "{\"type\":\"Feature\",\"properties\":{\"class\":\"primary\"},\"geometry\":null}";
+    world.put("roads.geojson", &text.replace("\"features\":[", &format!("\"features\":[{bare},")));
+    for filter in ["", "\nwhere = \"class = 'primary'\""] {
+        world.change(&[("file = \"roads.geojson\"", &format!("file = \"roads.geojson\"{filter}"))]);
+        let found = world.run(&["build", "plan.toml", "--json"]).ended(0).json();
+        super::says(&found["warnings"].to_string(), &["empty_geometry", "1 features have no geometry"]);
+    }
+}

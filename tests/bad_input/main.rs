@@ -11,6 +11,7 @@ mod grids;
 mod layers;
 mod memory;
 mod outputs;
+mod packed;
 mod plans;
 mod records;
 
@@ -48,6 +49,33 @@ fn refused_by_build(world: &World, code: i32, words: &[&str]) -> String {
     assert!(!built.stderr.contains("panicked"), "{}", built.stderr);
     unchanged(&before, &world.files(""));
     built.stderr
+}
+
+/// Asserts that a build reads so many rows, keeps so many and drops the others by these rules, and lists
+/// each of them; and that `check` is content. What the build found.
+#[track_caller]
+fn counted(world: &World, read: u64, kept: u64, dropped: &[(&str, u64)]) -> serde_json::Value {
+    world.run(&["check", "plan.toml"]).ended(0);
+    let found = world.run(&["build", "plan.toml", "--json"]).ended(0).json();
+    let records = &found["records"];
+    let by_rule: BTreeMap<&str, u64> = records["dropped"]
+        .as_object()
+        .expect("the rules")
+        .iter()
+        .map(|(rule, n)| (rule.as_str(), n.as_u64().expect("a count")))
+        .filter(|(_, n)| *n > 0)
+        .collect();
+    assert_eq!(by_rule, dropped.iter().copied().collect(), "{records}");
+    assert_eq!((records["read"].as_u64(), records["kept"].as_u64()), (Some(read), Some(kept)), "{records}");
+    assert_eq!(read, kept + by_rule.values().sum::<u64>());
+    let mut listed: BTreeMap<String, u64> = BTreeMap::new();
+    let mut table = csv::Reader::from_path(world.path("out/dropped.csv")).expect("the dropped rows");
+    for row in table.records() {
+        *listed.entry(row.expect("a row")[2].to_owned()).or_insert(0) += 1;
+    }
+    let listed: BTreeMap<&str, u64> = listed.iter().map(|(rule, n)| (rule.as_str(), *n)).collect();
+    assert_eq!(listed, by_rule);
+    found
 }
 
 /// Asserts that two listings hold the same files with the same bytes.

@@ -3,7 +3,7 @@
 use std::fs;
 
 use super::common::{HEADER, World, project, record, says};
-use super::refused;
+use super::{counted, refused};
 
 #[test]
 fn header_only() {
@@ -193,6 +193,238 @@ fn a_quote_that_is_never_closed() {
         world.change(&[("records.tsv", "records.csv")]);
         refused(&world, 3, &["records.csv:21", "quote", "never closed"]);
     }
+}
+
+/// The lines of the records, header first, with commas between the fields.
+fn with_commas(world: &World) -> Vec<String> {
+    let text = fs::read_to_string(world.path("records.tsv")).unwrap();
+    text.lines().map(|l| l.replace('\t', ",")).collect()
+}
+
+fn put(world: &World, name: &str, bytes: &[u8]) {
+    world.put_bytes(name, bytes);
+    world.change(&[("records.tsv", name)]);
+}
+
+fn warned<'a>(found: &'a serde_json::Value, rule: &str) -> Option<&'a serde_json::Value> {
+    found["warnings"].as_array().unwrap().iter().find(|w| w["rule"] == rule)
+}
+
+#[test]
+fn a_quote_never_closed_in_a_long_file() {
+    let world = World::new();
+    let mut lines = with_commas(&world);
+    let rows = lines[1..].to_vec();
+    (0..400).for_each(|_| lines.extend(rows.iter().cloned()));
+    lines[20].insert(0, '"');
+    let text = lines.join("\n");
+    assert!(text.len() > 5 << 20, "{}", text.len());
+    put(&world, "records.csv", text.as_bytes());
+    refused(&world, 3, &["records.csv:21", "quote", "never closed", "quotes = \"none\""]);
+    // the cure: two more characters in one identifier
+    world.change(&[("file = \"records.tsv\"", "file = \"records.csv\"\nquotes = \"none\"")]);
+    let rows = lines.len() as u64 - 1;
+    counted(&world, rows, rows, &[]);
+}
+
+/// Quotes that close again have swallowed the lines between them.
+#[test]
+fn stray_quotes_that_swallow_lines() {
+    let world = World::new();
+    let mut lines = with_commas(&world);
+    lines[20].insert(0, '"');
+    lines[25] = lines[25].replacen(',', ",\"", 1);
+    put(&world, "records.csv", lines.join("\n").as_bytes());
+    // lines 21 to 26 are one row with too few fields
+    let found = counted(&world, 235, 234, &[("unreadable_row", 1)]);
+    let warning = warned(&found, "swallowed_lines").expect("a warning");
+    says(&warning.to_string(), &["records.csv:21", "5 lines", "quotes = "]);
+}
+
+/// In the last field they leave a row with as many fields as it should have; its lines are rows all the
+/// same.
+#[test]
+fn stray_quotes_that_leave_a_whole_row() {
+    let world = World::new();
+    let mut lines = with_commas(&world);
+    for line in [20, 25] {
+        lines[line] = lines[line].replace("Genus", "\"Genus");
+    }
+    put(&world, "records.csv", lines.join("\n").as_bytes());
+    let found = counted(&world, 235, 235, &[]);
+    let warning = warned(&found, "swallowed_lines").expect("a warning");
+    says(&warning.to_string(), &["records.csv:21", "5 lines", "quotes = "]);
+    // a remark of several lines is none of that
+    lines[20] = lines[20].replace("\"Genus", "\"Genus\nfound on a thistle, twice\nby the tarn\"");
+    lines[25] = lines[25].replace('"', "");
+    put(&world, "records.csv", lines.join("\n").as_bytes());
+    let found = counted(&world, 240, 240, &[]);
+    assert!(warned(&found, "swallowed_lines").is_none(), "{found}");
+}
+
+#[test]
+fn lines_of_many_megabytes() {
+    let world = World::new();
+    let mut lines = with_commas(&world);
+    // kept in memory: a name of 10 MB is a name
+    lines[20] += &"x".repeat(10 << 20);
+    put(&world, "records.csv", lines.join("\n").as_bytes());
+    counted(&world, 240, 240, &[]);
+    // too long to be kept: passed over, and counted
+    lines[20] += &"x".repeat(30 << 20);
+    put(&world, "records.csv", lines.join("\n").as_bytes());
+    counted(&world, 240, 239, &[("unreadable_row", 1)]);
+    let dropped = fs::read_to_string(world.path("out/dropped.csv")).unwrap();
+    says(&dropped, &["records.csv,21,unreadable_row,a line of 419"]);
+    lines.swap(20, 240);
+    put(&world, "records.csv", lines.join("\n").as_bytes());
+    counted(&world, 240, 239, &[("unreadable_row", 1)]);
+    lines.truncate(1);
+    lines[0] += &"x".repeat(40 << 20);
+    put(&world, "records.csv", lines.join("\n").as_bytes());
+    refused(&world, 3, &["records.csv:1", "first line", "header"]);
+}
+
+#[test]
+fn numbers_that_are_none_and_ragged_rows() {
+    let world = World::new();
+    let mut text = fs::read_to_string(world.path("records.tsv")).unwrap();
+    for place in ["12,5\t45.14", "1e400\t45.14", "NaN\tNaN", "inf\t45.14", "9.01\t-1e999", "0x9\t45"] {
+        text += &format!("odd\t{place}\t2019-01-01\tA\tGenus species\n");
+    }
+    text += "short\t9.01\t45.14\nlong\t9.01\t45.14\t2019-01-01\tA\tGenus\tmore\n";
+    text += "nul\t9.01\t45.14\t2019-01-01\tA\0\tGenus species\n";
+    world.put("records.tsv", &text);
+    counted(&world, 249, 240, &[("impossible_coordinate", 6), ("unreadable_row", 3)]);
+    let dropped = fs::read_to_string(world.path("out/dropped.csv")).unwrap();
+    says(
+        &dropped,
+        &[
+            "records.tsv,242,impossible_coordinate,\"12,5 45.14\"",
+            "records.tsv,243,impossible_coordinate,1e400",
+        ],
+    );
+    says(
+        &dropped,
+        &[
+            "248,unreadable_row,3 fields instead of 6",
+            "249,unreadable_row,7 fields",
+            "250,unreadable_row,a NUL byte",
+        ],
+    );
+}
+
+#[test]
+fn two_columns_of_one_name() {
+    let world = World::new();
+    let text = fs::read_to_string(world.path("records.tsv")).unwrap();
+    world.put("records.tsv", &text.replace("occurrenceID", "recordedBy"));
+    refused(&world, 3, &["records.tsv:1", "two columns", "`recordedBy`", "rename"]);
+    // in another case: the exact one counts
+    world.put("records.tsv", &text.replace("occurrenceID", "RECORDEDBY"));
+    counted(&world, 240, 240, &[]);
+    // neither is exact: which is meant cannot be told
+    let neither =
+        text.replace("occurrenceID", "DECIMALLATITUDE").replace("decimalLatitude", "DecimalLatitude");
+    world.put("records.tsv", &neither);
+    refused(&world, 3, &["records.tsv:1", "decimalLatitude", "`DecimalLatitude`", "`DECIMALLATITUDE`"]);
+}
+
+/// Quotes are characters between tabs, unless the plan says otherwise.
+#[test]
+fn names_in_quotes_between_tabs() {
+    let world = World::new();
+    let text = fs::read_to_string(world.path("records.tsv")).unwrap();
+    let quoted: Vec<String> = text.lines().map(|l| format!("\"{}\"", l.replace('\t', "\"\t\""))).collect();
+    world.put("records.tsv", &quoted.join("\n"));
+    refused(&world, 3, &["records.tsv:1", "decimalLongitude", "in quotes", "quotes = \"double\""]);
+    world.change(&[("file = \"records.tsv\"", "file = \"records.tsv\"\nquotes = \"double\"")]);
+    counted(&world, 240, 240, &[]);
+}
+
+#[test]
+fn a_file_named_twice() {
+    let world = World::new();
+    world.change(&[("file = \"records.tsv\"", "file = [\"records.tsv\", \"./records.tsv\"]")]);
+    refused(&world, 2, &["plan.toml", "records.tsv", "named twice", "once"]);
+    world.change(&[(
+        "file = \"records.tsv\"",
+        "file = \"records.tsv\"\n[[records.source]]\nfile = \"records.tsv\"",
+    )]);
+    refused(&world, 2, &["plan.toml", "records.tsv", "named twice", "once"]);
+}
+
+#[test]
+fn names_in_another_case_are_found() {
+    let world = World::new();
+    let text = fs::read_to_string(world.path("records.tsv")).unwrap();
+    let (header, rows) = text.split_once('\n').unwrap();
+    world.put("records.tsv", &format!("{}\n{rows}", header.to_lowercase()));
+    counted(&world, 240, 240, &[]);
+}
+
+#[test]
+fn every_row_dropped() {
+    let world = World::new();
+    rewritten(&world, |_, _| (String::new(), String::new()));
+    refused(&world, 3, &["records.tsv", "read 120, kept 0", "no_coordinate 120"]);
+    rewritten(&world, |_, _| ("0".into(), "0".into()));
+    refused(&world, 3, &["records.tsv", "zero_zero 120"]);
+}
+
+/// A separator at the end of every row, but not of the header.
+#[test]
+fn every_row_with_a_field_too_many() {
+    let world = World::new();
+    let lines = with_commas(&world);
+    let text = lines[0].clone() + "\n" + &lines[1..].join(",\n") + ",\n";
+    put(&world, "records.csv", text.as_bytes());
+    refused(&world, 3, &["records.csv", "unreadable_row 240", "as many fields as the header"]);
+}
+
+#[test]
+fn text_in_utf16() {
+    let world = World::new();
+    let text = fs::read_to_string(world.path("records.tsv")).unwrap();
+    let little: Vec<u8> = text.encode_utf16().flat_map(u16::to_le_bytes).collect();
+    let big: Vec<u8> = text.encode_utf16().flat_map(u16::to_be_bytes).collect();
+    for (mark, bytes) in [(&b"\xff\xfe"[..], &little), (b"\xfe\xff", &big), (b"", &little), (b"", &big)] {
+        world.put_bytes("records.tsv", &[mark, bytes].concat());
+        refused(&world, 3, &["records.tsv", "UTF-16", "UTF-8"]);
+    }
+}
+
+#[test]
+fn latin1_and_lone_carriage_returns() {
+    let world = World::new();
+    let text = fs::read_to_string(world.path("records.tsv")).unwrap().replace("Observer", "Ång Åse");
+    let bytes: Vec<u8> = text.chars().map(|c| u8::try_from(u32::from(c)).unwrap()).collect();
+    world.put_bytes("records.tsv", &bytes);
+    let found = counted(&world, 240, 240, &[]);
+    says(
+        &warned(&found, "read_as_latin1").expect("a warning").to_string(),
+        &["records.tsv", "240 lines", "UTF-8"],
+    );
+    world.put("records.tsv", &text.replace('\n', "\r"));
+    let found = counted(&world, 240, 240, &[]);
+    assert!(warned(&found, "read_as_latin1").is_none());
+}
+
+/// A column that should hold a datum holds something else in every row.
+#[test]
+fn a_datum_of_its_own_in_every_row() {
+    let world = World::new();
+    let rows = 120_000;
+    let mut text = String::from("decimalLongitude\tdecimalLatitude\teventDate\trecordedBy\tgeodeticDatum\n");
+    for (i, (lon, lat)) in world.lonlat(&world.points(rows)).into_iter().enumerate() {
+        text += &format!("{lon:.7}\t{lat:.7}\t2019-01-0{}\tO{}\t{i}\n", 1 + i % 9, i % 7);
+    }
+    world.put("records.tsv", &text);
+    let begun = std::time::Instant::now();
+    let found = counted(&world, rows, rows, &[]);
+    let said = found["warnings"].as_array().unwrap().iter().filter(|w| w["rule"] == "unknown_datum").count();
+    assert!((1..=20).contains(&said), "{said} warnings");
+    assert!(begun.elapsed() < std::time::Duration::from_secs(60), "took {:?}", begun.elapsed());
 }
 
 /// An output never replaces an input of the same plan.

@@ -4,6 +4,7 @@
 
 #![allow(dead_code, reason = "each test takes its own part")]
 
+pub mod packing;
 pub mod raster;
 
 use std::collections::BTreeMap;

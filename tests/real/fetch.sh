@@ -3,7 +3,8 @@
 #
 #   bash tests/real/fetch.sh [FOLDER]
 #
-# FOLDER defaults to tests/.cache/real. A folder that is already prepared is left as it is.
+# FOLDER defaults to tests/.cache/real. A folder that is already prepared, by this version of the
+# script, is left as it is.
 # Ends with 0: ready · 75: the package registry cannot be reached · 69: a tool is missing ·
 # 65: what came is not what was expected.
 set -euo pipefail
@@ -18,13 +19,17 @@ streets_archive=quackosm-0.19.0.tar.gz
 records_sum=7038d0d02c4fe662451bf3feb25414266ee61aa7f9ea5c6786be862b1f49892f
 streets_sum=90b9888963baff37c169fc6f4eec8b07a1d68228426b7a9cabbc7a685a2fd173
 
+# What `ready` says when all that this version makes is there.
+made="2: occurrence.txt, archive, archive.zip, roads, land, population"
+
 # The grid: 10 m, 300 columns x 350 rows, upper left corner (371800, 4846000).
 crs=EPSG:32632
 grid=(-te 371800 4842500 374800 4846000 -tr 10 10)
 residents=39050
 
 main() {
-    [[ -e "$folder/ready" ]] && exit 0
+    [[ -e "$folder/ready" && "$(cat "$folder/ready")" == "$made" ]] && exit 0
+    rm -f "$folder/ready"
     for tool in python3 ogr2ogr gdal_rasterize gdalinfo sha256sum tar; do
         command -v "$tool" >/dev/null || { echo "no \`$tool\` on this machine" >&2; exit 69; }
     done
@@ -36,8 +41,10 @@ main() {
     roads
     land
     people
-    mv -f "$work"/*.txt "$work"/*.gpkg "$work"/*.tif "$folder/"
-    touch "$folder/ready"
+    pack
+    rm -rf "$folder/archive"
+    mv -f "$work"/archive "$work"/archive.zip "$work"/*.txt "$work"/*.gpkg "$work"/*.tif "$folder/"
+    printf '%s\n' "$made" >"$folder/ready"
 }
 
 genuine() {
@@ -59,8 +66,20 @@ fetch() {
 unpack() {
     tar -xzf "$folder/$records_archive" -C "$work"
     tar -xzf "$folder/$streets_archive" -C "$work"
-    mv "$work/${records_archive%.tar.gz}/sample-dataset/occurrence.txt" "$work/"
+    mv "$work/${records_archive%.tar.gz}/sample-dataset" "$work/archive"
+    cp "$work/archive/occurrence.txt" "$work/"
     streets="$work/${streets_archive%.tar.gz}/tests/test_files"
+}
+
+# The archive as people download it.
+pack() {
+    python3 - "$work/archive" "$work/archive.zip" <<'PYTHON'
+import pathlib, sys, zipfile
+folder = pathlib.Path(sys.argv[1])
+with zipfile.ZipFile(sys.argv[2], "w", zipfile.ZIP_DEFLATED) as packed:
+    for path in sorted(p for p in folder.rglob("*") if p.is_file()):
+        packed.write(path, path.relative_to(folder))
+PYTHON
 }
 
 # Streets and other lines, as the OSM driver of GDAL reads them.

@@ -5,9 +5,10 @@ use std::io::Read;
 use crate::diag::{Diagnostic, Outcome};
 use crate::records::Quotes;
 
+use super::super::unpack::broken;
 use super::blocks::{Block, Blocks};
 use super::encoding::{Encoding, decode};
-use super::source::{Form, TextSource, broken};
+use super::source::{Form, TextSource};
 use super::split::{Dialect, Rows, Step};
 
 /// Separators looked for in a header, in the order in which ties are settled.
@@ -37,7 +38,7 @@ impl Head {
         let mut stream = (source.open)()?;
         let mut glance = Vec::new();
         stream.by_ref().take(GLANCE).read_to_end(&mut glance).map_err(|e| broken(source.name, &e))?;
-        if glance.starts_with(b"\xff\xfe") || glance.starts_with(b"\xfe\xff") {
+        if is_utf16(&glance) {
             return Err(Diagnostic::input("not_utf8", source.name, "is written in UTF-16")
                 .cure("save it as UTF-8")
                 .into());
@@ -89,6 +90,9 @@ impl Head {
                 width = rows.len();
             }
         }
+        if header == 0 {
+            width = usual_width(&first, dialect);
+        }
         if width < columns && !first.is_empty() {
             return Err(narrow(source.name, width, columns).into());
         }
@@ -101,6 +105,27 @@ impl Head {
         }
         Ok(Self { dialect, encoding, names, width, lines, raw, blocks })
     }
+}
+
+/// Whether a text begins as one in UTF-16 does: with its mark, or with every other byte zero.
+fn is_utf16(glance: &[u8]) -> bool {
+    let zero = |from: usize| glance.iter().take(64).skip(from).step_by(2).all(|b| *b == 0);
+    let plain = |from: usize| glance.iter().take(64).skip(from).step_by(2).all(|b| *b != 0);
+    let marked = glance.starts_with(b"\xff\xfe") || glance.starts_with(b"\xfe\xff");
+    marked || (glance.len() >= 4 && ((zero(0) && plain(1)) || (zero(1) && plain(0))))
+}
+
+/// Fields of most of the first rows: without a header, the very first may be the odd one.
+fn usual_width(first: &[u8], dialect: Dialect) -> usize {
+    let mut rows = Rows::new(first, None, dialect);
+    let mut counts = std::collections::BTreeMap::new();
+    for _ in 0..100 {
+        if !matches!(rows.step(), Step::Row(_)) {
+            break;
+        }
+        *counts.entry(rows.len()).or_insert(0) += 1;
+    }
+    counts.into_iter().max_by_key(|(_, rows)| *rows).map_or(0, |(width, _)| width)
 }
 
 /// The signs of a text: given, or as its first line shows.

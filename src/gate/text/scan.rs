@@ -9,10 +9,11 @@ use rayon::prelude::*;
 
 use crate::diag::{Diagnostic, Observer, Outcome};
 
+use super::super::unpack::broken;
 use super::blocks::{Block, Blocks, LONGEST};
 use super::encoding::{Encoding, census, decode, is_latin1};
 use super::head::Head;
-use super::source::{TextSource, broken};
+use super::source::TextSource;
 use super::split::{Dialect, Rows, Step};
 
 /// Blocks worked on at once.
@@ -26,6 +27,8 @@ pub(in crate::gate) trait Work: Sync {
     fn begin(&self) -> Self::Part;
     /// Takes a row that has all its fields; lines count from 1 within the part.
     fn row(&self, part: &mut Self::Part, line: u64, rows: &Rows);
+    /// Notes that a row that was taken holds lines inside its quotes that look like rows.
+    fn swallowed(&self, _part: &mut Self::Part, _line: u64, _lines: u64) {}
     /// Takes a row that cannot be read, why, and over how many lines it runs.
     fn unreadable(&self, part: &mut Self::Part, line: u64, why: &str, lines: u64);
     /// Ends a part.
@@ -127,10 +130,21 @@ fn parse<W: Work>(block: &Ready, dialect: Dialect, width: usize, work: &W) -> Ou
             work.unreadable(&mut parsed.part, line, why, lines);
         } else {
             work.row(&mut parsed.part, line, &rows);
+            let inside = if lines > 1 { like_rows(rows.raw(), dialect, width) } else { 0 };
+            if inside > 0 {
+                work.swallowed(&mut parsed.part, line, inside);
+            }
         }
     }
     work.end(&mut parsed.part)?;
     Ok(parsed)
+}
+
+/// How many lines of a row, beyond its first, have as many separators as a whole row.
+fn like_rows(raw: &[u8], dialect: Dialect, width: usize) -> u64 {
+    let lines = raw.split(|b| *b == dialect.terminator).skip(1);
+    let whole = |l: &&[u8]| memchr::memchr_iter(dialect.separator, l).count() + 1 == width;
+    lines.filter(whole).count() as u64
 }
 
 /// Why a row is no text.

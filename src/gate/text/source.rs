@@ -2,7 +2,7 @@
 
 use std::io::Read;
 
-use crate::diag::{Diagnostic, Outcome};
+use crate::diag::Outcome;
 use crate::records::Quotes;
 
 use super::encoding::Encoding;
@@ -37,9 +37,4 @@ pub(in crate::gate) struct TextSource<'a> {
     pub(in crate::gate) open: Open<'a>,
     /// Its layout.
     pub(in crate::gate) form: Form,
-}
-
-/// An error of a stream.
-pub(in crate::gate) fn broken(file: &str, error: &std::io::Error) -> Diagnostic {
-    Diagnostic::input("unreadable", file, format!("cannot be read: {error}")).cure("check the file")
 }

@@ -97,11 +97,20 @@ fn records(f: &Finding) -> String {
     let caps: Vec<String> = r
         .capped
         .iter()
-        .map(|c| format!("{} of the total to one {}", words::percent(c.cap), if c.what == "observer" { "observer" } else { "data set" }))
+        .map(|c| {
+            format!(
+                "{} of the total to one {}",
+                words::percent(c.cap),
+                if c.what == "observer" { "observer" } else { "data set" }
+            )
+        })
         .collect();
     let capped = match caps.as_slice() {
         [] => String::new(),
-        caps => format!(" They were weighted so as to leave at most {}, which left a weight of {units}.", caps.join(" and ")),
+        caps => format!(
+            " They were weighted so as to leave at most {}, which left a weight of {units}.",
+            caps.join(" and ")
+        ),
     };
     format!(
         "Survey effort was estimated from records of the target group (Phillips et al. 2009) on a grid of {} × {} cells in {}, {} of them ({}) inside the study region. Of {} records read, {} were kept after screening. {counted}{capped}",
