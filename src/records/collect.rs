@@ -151,12 +151,14 @@ impl<'a> Collector<'a> {
 
     fn records(self, sorted: &Sorted, piles: Vec<super::piles::Pile>) -> Outcome<Records> {
         let (visits, count) = (&sorted.visits, self.plan.count);
-        let mut units = units(visits, count);
+        let (mut units, facts) = rayon::join(|| units(visits, count), || facts(visits));
         let groups = Groups::new(self.plan.cap, sorted, count);
         let capped = match &groups {
             Some(groups) => groups.cap(&mut units)?,
             None => Vec::new(),
         };
+        let (observers, datasets) =
+            rayon::join(|| by_observer(visits, &units), || by_dataset(sorted, &units));
         if count == Count::Places {
             units.dedup_by_key(|u| u.cell); // visits are sorted by cell
             units.iter_mut().enumerate().for_each(|(n, u)| {
@@ -166,12 +168,11 @@ impl<'a> Collector<'a> {
         let places = visits.chunk_by(|a, b| a.key.0 == b.key.0).count();
         let observer = visits.iter().any(|v| v.key.1 > 0);
         let dataset = visits.iter().any(|v| v.dataset > 0) || !sorted.others.is_empty();
-        let (observers, datasets) = (by_observer(visits, count), by_dataset(sorted, count));
         Ok(Records {
             count,
             outings: count != Count::Places && (observer || visits.iter().any(|v| v.key.2.is_some())),
             places,
-            visits: facts(visits),
+            visits: facts,
             effective_observers: observer.then(|| effective(&observers)),
             effective_datasets: dataset.then(|| effective(&datasets)),
             top: [observer.then(|| top(&observers)), dataset.then(|| top(&datasets)), Some(top_cell(&units))],

@@ -11,7 +11,7 @@ use super::visits::PARTS;
 use hashbrown::{DefaultHashBuilder, HashTable};
 
 /// Rows after which a part forgets the places that were seen least, once it holds as many.
-const WINDOW: u64 = 32_768;
+const WINDOW: u64 = 8_192;
 /// The largest piles that are told.
 pub(super) const TOLD: usize = 10;
 

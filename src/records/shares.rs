@@ -11,10 +11,10 @@ pub(super) fn weight(visit: &Visit, count: Count) -> f64 {
     if count == Count::Records { f64::from(visit.records) } else { 1.0 }
 }
 
-/// Weight by observer; 0 is the unknown.
-pub(super) fn by_observer(visits: &[Visit], count: Count) -> BTreeMap<u32, f64> {
+/// Weight by observer; 0 is the unknown. The units are those of the visits, one each.
+pub(super) fn by_observer(visits: &[Visit], units: &[Unit]) -> BTreeMap<u32, f64> {
     let mut by = Vec::new();
-    visits.iter().for_each(|v| add(&mut by, v.key.1, weight(v, count)));
+    visits.iter().zip(units).for_each(|(v, u)| add(&mut by, v.key.1, u.weight));
     numbered(&by)
 }
 
@@ -50,11 +50,15 @@ pub(super) fn datasets_of(sorted: &Sorted, visit: usize) -> Vec<(u32, f64)> {
 }
 
 /// Weight by data set; a visit with records of several is divided among them.
-pub(super) fn by_dataset(sorted: &Sorted, count: Count) -> BTreeMap<u32, f64> {
+pub(super) fn by_dataset(sorted: &Sorted, units: &[Unit]) -> BTreeMap<u32, f64> {
     let mut by = Vec::new();
-    for (i, visit) in sorted.visits.iter().enumerate() {
+    if sorted.others.is_empty() {
+        sorted.visits.iter().zip(units).for_each(|(v, u)| add(&mut by, v.dataset, u.weight));
+        return numbered(&by);
+    }
+    for (i, unit) in units.iter().enumerate() {
         for (dataset, share) in datasets_of(sorted, i) {
-            add(&mut by, dataset, weight(visit, count) * share);
+            add(&mut by, dataset, unit.weight * share);
         }
     }
     numbered(&by)
@@ -83,13 +87,22 @@ pub(super) fn top_cell(units: &[Unit]) -> (u32, f64) {
 }
 
 pub(super) fn facts(visits: &[Visit]) -> VisitFacts {
-    let mut sizes: Vec<f64> = visits.iter().map(|v| f64::from(v.records)).collect();
-    sizes.sort_unstable_by(f64::total_cmp);
-    let n = sizes.len() as f64;
+    let mut by_size: BTreeMap<u32, u64> = BTreeMap::new();
+    visits.iter().for_each(|v| *by_size.entry(v.records).or_insert(0) += 1);
+    let n = visits.len() as u64;
+    // the size of the visit of this rank, from 0
+    let size = |rank: u64| {
+        let mut before = 0;
+        let found = by_size.iter().find(|(_, count)| {
+            before += **count;
+            before > rank
+        });
+        f64::from(*found.expect("ranks are below the count").0)
+    };
     VisitFacts {
-        count: visits.len() as u64,
-        mean: sizes.iter().sum::<f64>() / n,
-        median: crate::maths::rank::quantile(&sizes, 0.5),
-        single_share: sizes.iter().take_while(|&&s| s == 1.0).count() as f64 / n,
+        count: n,
+        mean: by_size.iter().map(|(size, count)| f64::from(*size) * *count as f64).sum::<f64>() / n as f64,
+        median: (size((n - 1) / 2) + size(n / 2)) / 2.0,
+        single_share: by_size.get(&1).map_or(0.0, |count| *count as f64 / n as f64),
     }
 }

@@ -5,7 +5,7 @@ use std::io::{self, Read};
 use memchr::{memchr, memrchr};
 
 /// Bytes read at once.
-pub(in crate::gate) const BLOCK: usize = 1 << 20;
+pub(in crate::gate) const BLOCK: usize = 1 << 21;
 /// A row longer than this is not kept in memory.
 pub(in crate::gate) const LONGEST: usize = 16 << 20;
 

@@ -17,7 +17,7 @@ use super::source::TextSource;
 use super::split::{Dialect, Rows, Step};
 
 /// Blocks worked on at once.
-const ROUND: usize = 8;
+const ROUND: usize = 4;
 
 /// What is done with rows; parts are worked on at once and taken in their order.
 pub(in crate::gate) trait Work: Sync {
@@ -106,7 +106,7 @@ fn parse<W: Work>(block: &Ready, dialect: Dialect, width: usize, work: &W) -> Ou
         parsed.lines = 1;
         work.unreadable(&mut parsed.part, 1, &format!("a line of {length} bytes"), 1);
     }
-    let text = std::str::from_utf8(&block.bytes).ok();
+    let text = simdutf8::basic::from_utf8(&block.bytes).ok();
     let doubtful = block.doubtful || text.is_none() || memchr::memchr(0, &block.bytes).is_some();
     let mut rows = Rows::new(&block.bytes, text, dialect);
     loop {
