@@ -79,9 +79,8 @@ fn shares_hold_in_the_surface() {
             let due = 0.99 * (*w as f64).min(cap * total) / total + 0.001;
             assert!((share - due).abs() < 2e-3, "{percent}, observer {who}: {share} is not {due}");
         }
-        // as written in the file, before any cap
         let top = found["records"]["top_share"]["observer"].as_f64().unwrap();
-        assert!((top - 120.0 / 285.0).abs() < 1e-12, "{top}");
+        assert!((top - cap).abs() < 1e-9, "{top}");
     }
 }
 

@@ -113,7 +113,7 @@ mod tests {
     fn every_byte_comes_once_and_blocks_end_with_lines() {
         let line = "some text of a row, with a few words\n";
         for ending in ["", "last line without its end"] {
-            let text = line.repeat(100_000) + ending;
+            let text = line.repeat(200_000) + ending;
             let found = blocks(text.as_bytes());
             assert!(found.len() > 2);
             let mut joined = Vec::new();
