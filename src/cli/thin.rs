@@ -192,7 +192,7 @@ fn words(file: &str, list: &SpotList, thinned: &Thinned, (rule, args): (&Rule, &
         vec![format!("{file}: {} records read, {} kept ({kept}{closest})", list.read(), thinned.kept.len())];
     if list.unreadable + list.placeless > 0 {
         lines.push(format!(
-            "  left out: {} rows that cannot be read, {} without a place",
+            "  left out: {} rows that cannot be read, {} without a place (or at 0, 0)",
             list.unreadable, list.placeless
         ));
     }

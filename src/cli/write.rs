@@ -308,7 +308,7 @@ fn columns(file: &str, found: &[Match]) -> Option<String> {
 fn seen(r: &Records) -> Vec<String> {
     let mut lines = r.ledger.lines();
     if let Some([w, s, e, n]) = r.reach.extent {
-        lines.push(format!("span x {w:.4} to {e:.4}, y {s:.4} to {n:.4} in the grid's CRS"));
+        lines.push(format!("all places read span x {w:.4} to {e:.4}, y {s:.4} to {n:.4} in the grid's CRS"));
     }
     if let Some((first, last)) = r.reach.days {
         let [day, range, month, year, none] = r.dates;

@@ -1,5 +1,7 @@
 //! The rules that need nothing but the row itself.
 
+use crate::maths::decimal::decimal;
+
 use super::dates::{DateRange, Precision};
 use super::ledger::Rule;
 use super::row::{Fields, Place, trimmed};
@@ -36,10 +38,12 @@ impl Radius {
 
     fn read(text: &str) -> Self {
         let text = trimmed(text);
-        match text.parse::<f64>() {
-            _ if text.is_empty() => Self::Unknown,
-            Ok(m) if m > 0.0 && m.is_finite() => Self::Metres(m),
-            Ok(m) if m <= 0.0 => Self::NotPositive,
+        if text.is_empty() {
+            return Self::Unknown;
+        }
+        match decimal(text) {
+            Some(m) if m > 0.0 && m.is_finite() => Self::Metres(m),
+            Some(m) if m <= 0.0 => Self::NotPositive,
             _ => Self::Unreadable,
         }
     }
@@ -135,8 +139,7 @@ fn coordinates(place: Place, degrees: bool) -> Result<(f64, f64), (Rule, String)
             if x.is_empty() || y.is_empty() {
                 return Err((Rule::NoCoordinate, String::new()));
             }
-            let number =
-                |t: &str| t.parse::<f64>().map_err(|_| (Rule::ImpossibleCoordinate, format!("{x} {y}")));
+            let number = |t: &str| decimal(t).ok_or_else(|| (Rule::ImpossibleCoordinate, format!("{x} {y}")));
             (number(x)?, number(y)?)
         }
     };

@@ -78,6 +78,11 @@ pub(super) const UNITS: [(f64, f64, &str); 4] = [
     (10.0, 1e-9, "100 units"),
 ];
 
+/// The whole number next to a coordinate, without the call that rounding costs on older processors.
+fn nearest(v: f64) -> f64 {
+    (v + 0.5_f64.copysign(v)) as i64 as f64
+}
+
 /// All signs.
 #[derive(Debug, Clone, Default)]
 pub(super) struct Signs {
@@ -122,7 +127,7 @@ impl Signs {
         };
         let scale = if degrees { 1.0 } else { 1e-3 };
         for ((steps, slack, _), sign) in lattices.iter().zip(counts) {
-            let off = |v: f64| (v * scale * steps - (v * scale * steps).round()).abs();
+            let off = |v: f64| (v * scale * steps - nearest(v * scale * steps)).abs();
             if off(x) <= *slack && off(y) <= *slack {
                 sign.add(seen.file, seen.line, seen.xy, 1);
             }

@@ -273,17 +273,25 @@ impl Says {
         let capped = |what: &str| records.capped.iter().any(|c| c.what == what);
         let cap = "check that this is effort and not an import; `cap` in [records] limits what one may weigh";
         if let Some((number, share)) = observer.filter(|_| !capped("observer")) {
-            let who = if number == 0 { "the unknown observer" } else { "one observer" };
-            say("one_observer", who.into(), share, cap);
+            let (who, cure) = if number == 0 {
+                (
+                    "what has no observer",
+                    "name the column that holds observers as `observer` in [records], if there is one: unknown ones count as one, so that their records of a day and cell are one visit",
+                )
+            } else {
+                ("one observer", cap)
+            };
+            say("one_observer", who.into(), share, cure);
         }
         if let Some((number, share)) = dataset.filter(|_| !capped("dataset") && datasets.len() > 2) {
             let name = datasets.get(number as usize).map_or("", String::as_str);
-            let who = if name.is_empty() {
-                "the unknown data set".into()
+            let (who, cure) = if name.is_empty() {
+                let cure = "name the column that holds data sets as `dataset` in [records], if there is one";
+                ("what has no data set".into(), cure)
             } else {
-                format!("the data set `{name}`")
+                (format!("the data set `{name}`"), cap)
             };
-            say("one_dataset", who, share, cap);
+            say("one_dataset", who, share, cure);
         }
         if let Some((number, share)) = cell {
             let (x, y) = region.centre(number as usize);

@@ -57,7 +57,7 @@ impl<'a> Spotter<'a> {
     }
 }
 
-/// Coordinates of a place, where they are numbers in range.
+/// Coordinates of a place, where they are numbers in range; both exactly zero stand for none.
 fn numbers(place: Place, degrees: bool) -> Option<(f64, f64)> {
     let (x, y) = match place {
         Place::Missing => return None,
@@ -65,7 +65,7 @@ fn numbers(place: Place, degrees: bool) -> Option<(f64, f64)> {
         Place::Text { x, y } => (x.trim().parse().ok()?, y.trim().parse().ok()?),
     };
     let legal = if degrees { x.abs() <= 180.0 && y.abs() <= 90.0 } else { x.is_finite() && y.is_finite() };
-    legal.then_some((x, y))
+    (legal && (x, y) != (0.0, 0.0)).then_some((x, y))
 }
 
 impl Desk for Spotter<'_> {
