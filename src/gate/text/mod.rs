@@ -3,6 +3,7 @@
 mod blocks;
 mod encoding;
 mod head;
+mod marks;
 mod scan;
 mod source;
 mod split;

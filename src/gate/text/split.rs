@@ -4,7 +4,9 @@
 //! Whatever follows a closing quote before the next separator belongs to the field as it stands. The
 //! twin in the tests is the `csv` crate.
 
-use memchr::{memchr, memchr2};
+use memchr::memchr;
+
+use super::marks::Marks;
 
 /// The signs a text is made of.
 #[derive(Debug, Clone, Copy, PartialEq, Eq)]
@@ -31,9 +33,20 @@ pub(in crate::gate) enum Step {
 /// Where a field lies: in the block, or, with its quotes resolved, in the text beside it.
 #[derive(Debug, Clone, Copy)]
 struct Span {
-    from: usize,
-    to: usize,
+    from: u32,
+    to: u32,
     resolved: bool,
+}
+
+impl Span {
+    /// A stretch of the block (which is far shorter than 4 GiB), or of the text beside it.
+    fn new(from: usize, to: usize, resolved: bool) -> Self {
+        Self { from: from as u32, to: to as u32, resolved }
+    }
+
+    fn range(self) -> std::ops::Range<usize> {
+        self.from as usize..self.to as usize
+    }
 }
 
 /// Walks through the rows of a block.
@@ -46,12 +59,14 @@ pub(in crate::gate) struct Rows<'a> {
     row: (usize, usize),
     spans: Vec<Span>,
     resolved: Vec<u8>,
+    marks: Marks<'a>,
 }
 
 impl<'a> Rows<'a> {
     /// Begins at the start of a block.
     pub(in crate::gate) fn new(bytes: &'a [u8], text: Option<&'a str>, dialect: Dialect) -> Self {
-        Self { bytes, text, dialect, at: 0, row: (0, 0), spans: Vec::new(), resolved: Vec::new() }
+        let marks = Marks::new(bytes, [dialect.separator, dialect.terminator]);
+        Self { bytes, text, dialect, at: 0, row: (0, 0), spans: Vec::new(), resolved: Vec::new(), marks }
     }
 
     /// Finds the next row.
@@ -89,17 +104,16 @@ impl<'a> Rows<'a> {
     fn plain(&mut self) -> bool {
         let from = self.at;
         let (to, end) = self.stop(from);
-        self.spans.push(Span { from, to, resolved: false });
+        self.spans.push(Span::new(from, to, false));
         end
     }
 
     /// Moves behind the next separator or terminator; where it stands, and whether the row ends there.
     fn stop(&mut self, from: usize) -> (usize, bool) {
-        let rest = &self.bytes[from..];
-        match memchr2(self.dialect.separator, self.dialect.terminator, rest) {
-            Some(n) => {
-                self.at = from + n + 1;
-                (from + n, rest[n] == self.dialect.terminator)
+        match self.marks.next(from) {
+            Some(at) => {
+                self.at = at + 1;
+                (at, self.bytes[at] == self.dialect.terminator)
             }
             None => {
                 self.at = self.bytes.len();
@@ -128,10 +142,10 @@ impl<'a> Rows<'a> {
                 _ => {
                     let end = self.stop(close + 1).1;
                     match begun {
-                        None => self.spans.push(Span { from: open, to: close, resolved: false }),
+                        None => self.spans.push(Span::new(open, close, false)),
                         Some(at) => {
                             self.resolved.extend_from_slice(&self.bytes[from..close]);
-                            self.spans.push(Span { from: at, to: self.resolved.len(), resolved: true });
+                            self.spans.push(Span::new(at, self.resolved.len(), true));
                         }
                     }
                     return Some(end);
@@ -146,7 +160,7 @@ impl<'a> Rows<'a> {
         let at = begun.unwrap_or(self.resolved.len());
         self.resolved.extend_from_slice(&self.bytes[from..close]);
         self.resolved.extend_from_slice(&self.bytes[close + 1..to]);
-        self.spans.push(Span { from: at, to: self.resolved.len(), resolved: true });
+        self.spans.push(Span::new(at, self.resolved.len(), true));
         end
     }
 
@@ -170,7 +184,7 @@ impl<'a> Rows<'a> {
     pub(in crate::gate) fn bytes(&self, field: usize) -> &[u8] {
         let span = self.spans[field];
         let from: &[u8] = if span.resolved { &self.resolved } else { self.bytes };
-        let bytes = &from[span.from..span.to];
+        let bytes = &from[span.range()];
         if field + 1 == self.spans.len() { bytes.strip_suffix(b"\r").unwrap_or(bytes) } else { bytes }
     }
 
@@ -179,7 +193,7 @@ impl<'a> Rows<'a> {
         let span = self.spans[field];
         match self.text {
             Some(text) if !span.resolved => {
-                let text = &text[span.from..span.to];
+                let text = &text[span.range()];
                 if field + 1 == self.spans.len() { text.strip_suffix('\r').unwrap_or(text) } else { text }
             }
             _ => std::str::from_utf8(self.bytes(field)).unwrap_or(""),
