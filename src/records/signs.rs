@@ -70,6 +70,8 @@ pub(super) const DEGREES: [(f64, f64, &str); 4] = [
     (60.0, 4e-3, "1 minute"),
     (100.0, 1e-6, "0.01 degree"),
 ];
+/// Where minutes stand among them.
+const MINUTES: usize = 2;
 /// The same for coordinates in metres or feet, by thousand units.
 pub(super) const UNITS: [(f64, f64, &str); 4] = [
     (0.01, 1e-9, "100,000 units"),
@@ -126,9 +128,14 @@ impl Signs {
             (UNITS, &mut self.on_units)
         };
         let scale = if degrees { 1.0 } else { 1e-3 };
-        for ((steps, slack, _), sign) in lattices.iter().zip(counts) {
+        let on = |(steps, slack, _): &(f64, f64, &str)| {
             let off = |v: f64| (v * scale * steps - nearest(v * scale * steps)).abs();
-            if off(x) <= *slack && off(y) <= *slack {
+            off(x) <= *slack && off(y) <= *slack
+        };
+        // every other lattice but that of minutes is part of the finest
+        let finest = on(&lattices[3]);
+        for (n, (lattice, sign)) in lattices.iter().zip(counts).enumerate() {
+            if (finest || (degrees && n == MINUTES)) && on(lattice) {
                 sign.add(seen.file, seen.line, seen.xy, 1);
             }
         }

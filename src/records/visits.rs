@@ -163,7 +163,7 @@ pub(super) fn outings(visits: &[Visit]) -> Vec<u32> {
 
 /// An observer list as a set: its names, trimmed, sorted, each once.
 pub(super) fn observer_set(text: &str) -> std::borrow::Cow<'_, str> {
-    if !text.contains('|') {
+    if !text.as_bytes().contains(&b'|') {
         return trimmed(text).into();
     }
     let names: std::collections::BTreeSet<&str> =
