@@ -307,7 +307,7 @@ fn the_unknown_observer_is_named_so() {
             row[3] = String::new();
         }
     });
-    found.said("one_observer", "records.tsv", &["the unknown observer"]);
+    found.said("one_observer", "records.tsv", &["what has no observer", "name the column"]);
 }
 
 #[test]
