@@ -1,7 +1,5 @@
 //! Records in a Darwin Core archive: rows of one table, each completed by the row it belongs to.
 
-use std::sync::atomic::{AtomicU64, Ordering};
-
 use hashbrown::HashMap;
 
 use crate::diag::{Diagnostic, Observer, Outcome};
@@ -11,7 +9,7 @@ use super::archive::{Archive, Field, Table};
 use super::container::Container;
 use super::layout::{Layout, Named, Slot, Texts};
 use super::record_files::Reading;
-use super::text::{Dialect, Form, Head, Rows, TextSource, Work, scan};
+use super::text::{Dialect, Form, Head, Parts, Rows, TextSource, Work, scan};
 
 /// Hands the records of an archive on.
 pub(super) fn read<D: Desk>(container: &Container, archive: &Archive, to: &mut Reading<D>) -> Outcome<()> {
@@ -25,6 +23,7 @@ pub(super) fn read<D: Desk>(container: &Container, archive: &Archive, to: &mut R
         }
         _ => None,
     };
+    let mut orphans = 0;
     for location in &archive.records.locations {
         let name = container.place(location);
         let text = text((container, location), &name, &archive.records, to.source().quotes);
@@ -34,11 +33,14 @@ pub(super) fn read<D: Desk>(container: &Container, archive: &Archive, to: &mut R
         let at = (file, to.number);
         let work = Handing { desk: to.desk, layout: &layout, parents: parents.as_ref(), at };
         let tray = &mut *to.tray;
-        let remark = scan(&text, head, &work, &mut |parts| tray.take(parts), to.observer)?;
+        let mut take = |parts: Parts<(D::Part, u64)>| {
+            orphans += parts.iter().map(|((_, orphans), _)| orphans).sum::<u64>();
+            tray.take(parts.into_iter().map(|((part, _), line)| (part, line)).collect())
+        };
+        let remark = scan(&text, head, &work, &mut take, to.observer)?;
         remark.into_iter().for_each(|r| to.tray.remark(r));
     }
-    let lost = parents.and_then(|(parents, _)| lost(container, parents.lost.into_inner()));
-    lost.into_iter().for_each(|r| to.tray.remark(r));
+    lost(container, orphans).into_iter().for_each(|r| to.tray.remark(r));
     Ok(())
 }
 
@@ -100,8 +102,6 @@ struct Parents {
     /// Where each field of the core stands among those kept.
     places: Vec<Option<usize>>,
     rows: HashMap<Box<str>, Fields>,
-    /// Records whose row is not there.
-    lost: AtomicU64,
 }
 
 impl Parents {
@@ -114,7 +114,7 @@ impl Parents {
     ) -> Outcome<(Self, Option<Diagnostic>)> {
         let mut places = vec![None; core.columns.len()];
         wanted.iter().enumerate().for_each(|(n, field)| places[*field] = Some(n));
-        let mut all = Self { places, rows: HashMap::new(), lost: AtomicU64::new(0) };
+        let mut all = Self { places, rows: HashMap::new() };
         let (mut twice, mut unreadable, mut first) = (0_u64, 0_u64, None);
         for location in &core.locations {
             let name = container.place(location);
@@ -229,16 +229,18 @@ impl Texts for Joined<'_> {
 }
 
 impl<D: Desk> Work for Handing<'_, D> {
-    type Part = D::Part;
+    /// With how many of its rows belong to none of the core: blocks may be read twice, so this is counted
+    /// where parts are taken.
+    type Part = (D::Part, u64);
 
-    fn begin(&self) -> D::Part {
-        self.desk.begin(self.at.0, self.at.1)
+    fn begin(&self) -> Self::Part {
+        (self.desk.begin(self.at.0, self.at.1), 0)
     }
 
-    fn row(&self, part: &mut D::Part, line: u64, rows: &Rows) {
+    fn row(&self, (part, orphans): &mut Self::Part, line: u64, rows: &Rows) {
         let parent = self.parents.and_then(|(parents, id)| {
             let found = parents.rows.get(rows.field(*id).trim());
-            parents.lost.fetch_add(u64::from(found.is_none()), Ordering::Relaxed);
+            *orphans += u64::from(found.is_none());
             found.map(|row| (parents, row.as_ref()))
         });
         self.layout.fields(&Joined { rows, parent }, None, |fields| {
@@ -246,15 +248,15 @@ impl<D: Desk> Work for Handing<'_, D> {
         });
     }
 
-    fn swallowed(&self, part: &mut D::Part, line: u64, lines: u64) {
+    fn swallowed(&self, (part, _): &mut Self::Part, line: u64, lines: u64) {
         self.desk.swallowed(part, line, lines);
     }
 
-    fn unreadable(&self, part: &mut D::Part, line: u64, why: &str, lines: u64) {
+    fn unreadable(&self, (part, _): &mut Self::Part, line: u64, why: &str, lines: u64) {
         self.desk.push(part, &Row { line, content: Content::Unreadable(why, lines) });
     }
 
-    fn end(&self, part: &mut D::Part) -> Outcome<()> {
+    fn end(&self, (part, _): &mut Self::Part) -> Outcome<()> {
         self.desk.settle(part)
     }
 }

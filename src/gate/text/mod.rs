@@ -10,6 +10,6 @@ mod split;
 
 pub(in crate::gate) use encoding::Encoding;
 pub(in crate::gate) use head::Head;
-pub(in crate::gate) use scan::{Work, scan};
+pub(in crate::gate) use scan::{Parts, Work, scan};
 pub(in crate::gate) use source::{Form, Open, TextSource};
 pub(in crate::gate) use split::{Dialect, Rows};
